@@ -20,9 +20,9 @@ from typing import Any
 import llvmlite
 import llvmlite.binding
 import numba
-import numba.core.config
 import numpy as np
 import scipy
+from numba.core import config
 from numba.extending import overload
 
 __all__ = ["cache_folder", "kernel", "overload"]
@@ -71,7 +71,7 @@ def _make_cache_folder() -> Path | None:
 cache_folder: Path | None = _make_cache_folder()
 
 
-def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
+def kernel(function: Callable[..., Any]) -> Any:
     """Compile a function of numbers and arrays on its first call, free of the interpreter lock.
 
     Parameters
@@ -86,10 +86,10 @@ def kernel(function: Callable[..., Any]) -> Callable[..., Any]:
     """
     options: dict[str, Any] = {"nogil": True, "error_model": "numpy", "fastmath": set(_FAST)}
     if cache_folder is None:
-        return numba.njit(**options)(function)  # type: ignore[no-any-return]
-    before = numba.core.config.CACHE_DIR
-    numba.core.config.CACHE_DIR = str(cache_folder)
+        return numba.njit(**options)(function)
+    before = config.CACHE_DIR  # type: ignore[attr-defined]
+    config.CACHE_DIR = str(cache_folder)  # type: ignore[attr-defined]
     try:
-        return numba.njit(cache=True, **options)(function)  # type: ignore[no-any-return]
+        return numba.njit(cache=True, **options)(function)
     finally:
-        numba.core.config.CACHE_DIR = before
+        config.CACHE_DIR = before  # type: ignore[attr-defined]

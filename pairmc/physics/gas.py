@@ -15,7 +15,7 @@ from pairmc.units import BOLTZMANN, Units
 
 def ball_volume(dimension: int, radius: float) -> float:
     """Return the volume of a ball: 2R (1D), πR² (2D), 4πR³/3 (3D)."""
-    return pi ** (dimension / 2) / gamma(dimension / 2 + 1) * radius**dimension
+    return float(pi ** (dimension / 2) / gamma(dimension / 2 + 1) * radius**dimension)
 
 
 def fermi_wavenumber(dimension: int, density: float) -> float:
@@ -33,7 +33,7 @@ def fermi_wavenumber(dimension: int, density: float) -> float:
     float
         Fermi wave number, per length.
     """
-    return 2 * pi * (density / ball_volume(dimension, 1.0)) ** (1 / dimension)
+    return float(2 * pi * (density / ball_volume(dimension, 1.0)) ** (1 / dimension))
 
 
 def density_of_fermi_wavenumber(dimension: int, wavenumber: float) -> float:

@@ -1,0 +1,177 @@
+"""Pair correlation: how often two particles are found at a separation, against chance.
+
+g_ss'(r) = ρ⁽²⁾_ss'(r)/(n_s n_s'), averaged over directions and over each bin; normalised by the
+densities of the run, not by the number of pairs, so that like particles at fixed N have
+∫(g − 1) n dV = −1 exactly.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+from numpy.typing import NDArray
+
+from pairmc.compiled import kernel
+from pairmc.physics.grids import SeparationGrid, separation_grid
+from pairmc.physics.observables.pair_correlation_settings import Settings
+from pairmc.physics.observables.variable import Variable
+from pairmc.physics.snapshots import Snapshots
+from pairmc.physics.system import System
+
+NAME = "pair_correlation"
+
+DIMENSIONS = ("pair", "separation")
+
+VARIABLES = {
+    "pair_correlation": Variable(DIMENSIONS, 0, "pair correlation g"),
+    "exchange_hole": Variable(
+        DIMENSIONS,
+        "-dimension",
+        "exchange hole: density of the second component of the pair around a particle of the "
+        "first, less its mean density",
+    ),
+}
+
+
+def grid(settings: Settings, system: System) -> SeparationGrid:
+    """Return the bins of the separation.
+
+    Parameters
+    ----------
+    settings
+        The observable's table of the run file.
+    system
+        The gas in its box.
+    """
+    return separation_grid(system, settings.bins)
+
+
+def empty(grid: SeparationGrid) -> dict[str, NDArray[np.int64]]:
+    """Return tallies of nothing.
+
+    Returns
+    -------
+    dict
+        ``pair_count`` (pair, separation): unordered pairs in each bin. ``moment_sum`` (joint) and
+        ``moment_product`` (joint, joint): Σx and Σxxᵀ over snapshots, x the pairs of one snapshot
+        in each joint bin. All int64, so that they add exactly in any order.
+    """
+    joint = grid.joint_bins
+    return {
+        "pair_count": np.zeros((len(grid.pairs), grid.bins), dtype=np.int64),
+        "moment_sum": np.zeros(joint, dtype=np.int64),
+        "moment_product": np.zeros((joint, joint), dtype=np.int64),
+    }
+
+
+def tally(snapshots: Snapshots, grid: SeparationGrid, out: dict[str, NDArray[np.int64]]) -> None:
+    """Add the pairs of many snapshots to `out`.
+
+    Parameters
+    ----------
+    snapshots
+        Positions and components.
+    grid
+        The bins.
+    out
+        Tallies as made by `empty`; added to in place.
+    """
+    components = 1 + max(j for _, _, j in grid.pairs)
+    pair_of = np.empty((components, components), dtype=np.int64)
+    for index, (_, i, j) in enumerate(grid.pairs):
+        pair_of[i, j] = pair_of[j, i] = index
+    _tally_pairs(
+        snapshots.position,
+        snapshots.component,
+        grid.sides,
+        pair_of,
+        grid.bins / grid.edges[-1],
+        grid.joint,
+        out["pair_count"],
+        out["moment_sum"],
+        out["moment_product"],
+    )
+
+
+@kernel
+def _count_pairs(position, component, sides, pair_of, bins_per_length, count):
+    """Add the pairs of one snapshot, at their minimum-image separation, to `count`."""
+    particles, dimension = position.shape
+    bins = count.shape[1]
+    for i in range(particles):
+        row = pair_of[component[i]]
+        for j in range(i):
+            square = 0.0
+            for a in range(dimension):
+                step = abs(position[i, a] - position[j, a])
+                step = sides[a] * min(step, 1.0 - step)
+                square += step * step
+            index = int(np.sqrt(square) * bins_per_length)
+            if index < bins:
+                count[row[component[j]], index] += 1
+
+
+@kernel
+def _tally_pairs(
+    position, component, sides, pair_of, bins_per_length, joint, total, moment_sum, moment_product
+):
+    """Add the pairs of all snapshots, and the moments of their joint bins."""
+    count = np.empty(total.shape, dtype=np.int64)
+    vector = np.empty(moment_sum.size, dtype=np.int64)
+    for s in range(position.shape[0]):
+        count[:] = 0
+        vector[:] = 0
+        _count_pairs(position[s], component[s], sides, pair_of, bins_per_length, count)
+        for pair in range(total.shape[0]):
+            for b in range(total.shape[1]):
+                total[pair, b] += count[pair, b]
+                vector[joint[pair, b]] += count[pair, b]
+        for k in range(vector.size):
+            moment_sum[k] += vector[k]
+            for l in range(vector.size):
+                moment_product[k, l] += vector[k] * vector[l]
+
+
+def counts(tallies: dict[str, NDArray[np.int64]]) -> NDArray[np.int64]:
+    """Return the counts behind the values (…, pair, separation)."""
+    return tallies["pair_count"]
+
+
+def values(
+    count: NDArray[np.int64] | NDArray[np.float64],
+    snapshots: NDArray[np.int64] | int,
+    grid: SeparationGrid,
+) -> dict[str, NDArray[np.float64]]:
+    """Return the variables that follow from counts.
+
+    Parameters
+    ----------
+    count : array (…, pair, separation)
+        Unordered pairs in each bin.
+    snapshots : int or array (…, 1, 1)
+        Snapshots they were counted in.
+    grid
+        The bins.
+
+    Returns
+    -------
+    dict
+        ``pair_correlation`` = count/(snapshots · ideal); ``exchange_hole`` = n_s'(g − 1), per
+        length unit**dimension.
+    """
+    correlation = count / (snapshots * grid.ideal)
+    return derived(correlation, grid)
+
+
+def derived(
+    correlation: NDArray[np.float64], grid: SeparationGrid
+) -> dict[str, NDArray[np.float64]]:
+    """Return all variables from the pair correlation (…, pair, separation)."""
+    hole = grid.density_second[:, None] * (correlation - 1.0)
+    return {"pair_correlation": correlation, "exchange_hole": hole}
+
+
+def mean_counts(
+    expected: dict[str, NDArray[np.float64]], grid: SeparationGrid
+) -> NDArray[np.float64]:
+    """Return the pairs per snapshot in each bin (pair, separation) if the values are `expected`."""
+    return expected["pair_correlation"] * grid.ideal
