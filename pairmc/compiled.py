@@ -25,7 +25,7 @@ import scipy
 from numba.core import config
 from numba.extending import overload
 
-__all__ = ["cache_folder", "kernel", "overload"]
+__all__ = ["cache_folder", "kernel", "overload", "processor"]
 
 # Sums may be reordered and multiplications fused, so that loops over rows use the vector unit;
 # infinities and NaN keep their meaning.
@@ -69,6 +69,11 @@ def _make_cache_folder() -> Path | None:
 
 
 cache_folder: Path | None = _make_cache_folder()
+
+
+def processor() -> str:
+    """Return the processor's model, which decides the last bits of results."""
+    return str(llvmlite.binding.get_host_cpu_name())
 
 
 def kernel(function: Callable[..., Any]) -> Any:

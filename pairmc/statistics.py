@@ -60,8 +60,19 @@ def poisson_interval(
     """
     count = np.asarray(count, dtype=np.float64)
     tail = 0.5 * (1.0 - level)
-    lower = np.where(count > 0, special.gammaincinv(np.maximum(count, 1e-300), tail), 0.0)
-    return lower, special.gammainccinv(count + 1.0, tail)
+    below = np.asarray(special.gammaincinv(np.maximum(count, 0.5), tail), dtype=np.float64)
+    lower = np.where(count > 0, below, 0.0)
+    upper = np.asarray(special.gammainccinv(count + 1.0, tail), dtype=np.float64)
+    return lower, upper
+
+
+def sum_by_group(
+    values: FloatArray | NDArray[np.int64], groups: NDArray[np.int64], size: int
+) -> FloatArray:
+    """Return the sums of `values` over each of `size` groups; group −1 is left out."""
+    kept = groups >= 0
+    sums = np.bincount(groups[kept], weights=values[kept], minlength=size)
+    return np.asarray(sums, dtype=np.float64)
 
 
 def merge_outward(
@@ -216,7 +227,7 @@ def hotelling(moments: Moments, expected: FloatArray) -> GlobalTest:
     p = int(np.count_nonzero(varying))
     if np.any(np.abs(offset[~varying]) > _NULL_DEVIATION):
         return GlobalTest(np.inf, p, M, 0.0)
-    if p == 0 or M <= p:
+    if p == 0 or p >= M:
         return GlobalTest(np.nan, p, M, np.nan)
     statistic = float(M * np.sum(offset[varying] ** 2 / variances[varying]))
     fraction = statistic * (M - p) / (p * (M - 1.0))

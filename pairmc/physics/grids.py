@@ -3,15 +3,38 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import Any, NamedTuple
 
 import numpy as np
 from numpy.typing import NDArray
 
 from pairmc.physics.gas import ball_volume
 from pairmc.physics.system import System, pair_labels
+from pairmc.statistics import sum_by_group
 
 # The covariance of an observable is kept over at most about this many joint bins.
 JOINT_BINS = 100
+
+
+class Coordinate(NamedTuple):
+    """One coordinate of a grid, as a result file names it.
+
+    Parameters
+    ----------
+    dimensions
+        Names of its dimensions.
+    values : array
+        Numbers in length units to the power below, or labels as bytes.
+    length_power
+        Its unit as a power of the length unit; None for labels.
+    long_name
+        What it is.
+    """
+
+    dimensions: tuple[str, ...]
+    values: NDArray[Any]
+    length_power: int | None
+    long_name: str
 
 
 @dataclass(frozen=True, eq=False)
@@ -33,6 +56,8 @@ class SeparationGrid:
         Density of the second component of each pair, per length unit**dimension.
     joint : array (pair, separation) of int64
         Joint bin, over which per-snapshot moments are kept, of every bin.
+    scale
+        k_F of the majority component, per length unit.
     """
 
     pairs: tuple[tuple[str, int, int], ...]
@@ -41,6 +66,7 @@ class SeparationGrid:
     ideal: NDArray[np.float64]
     density_second: NDArray[np.float64]
     joint: NDArray[np.int64]
+    scale: float
 
     @property
     def bins(self) -> int:
@@ -52,10 +78,31 @@ class SeparationGrid:
         """Number of joint bins, all pairs together."""
         return int(self.joint.max()) + 1
 
+    @property
+    def blocks(self) -> NDArray[np.int64]:
+        """Block of every joint bin: its pair. Only bins of one block are ever merged."""
+        blocks = np.zeros(self.joint_bins, dtype=np.int64)
+        blocks[self.joint] = np.arange(len(self.pairs))[:, None]
+        return blocks
+
+    def coordinates(self) -> dict[str, Coordinate]:
+        """Return what a result file says about the bins."""
+        labels = np.array([label.encode() for label, _, _ in self.pairs])
+        centres = 0.5 * (self.edges[1:] + self.edges[:-1])
+        bounds = np.stack([self.edges[:-1], self.edges[1:]], axis=1)
+        along = ("separation",)
+        return {
+            "pair": Coordinate(("pair",), labels, None, "pair of spin components"),
+            "separation": Coordinate(along, centres, 1, "separation of two particles, bin centre"),
+            "separation_bounds": Coordinate((*along, "bound"), bounds, 1, ""),
+            "scaled_separation": Coordinate(
+                along, self.scale * centres, 0, "separation times k_F of the majority component"
+            ),
+        }
+
     def joint_sums(self, values: NDArray[np.float64]) -> NDArray[np.float64]:
         """Add an array (pair, separation) up over each joint bin."""
-        sums = np.bincount(self.joint.ravel(), weights=values.ravel(), minlength=self.joint_bins)
-        return sums.astype(np.float64)
+        return sum_by_group(values, self.joint, self.joint_bins)
 
 
 def shell_volumes(dimension: int, edges: NDArray[np.float64]) -> NDArray[np.float64]:
@@ -100,4 +147,5 @@ def separation_grid(system: System, bins: int) -> SeparationGrid:
         ideal=np.outer(weights, shells),
         density_second=np.array([densities[j] for _, _, j in pairs]),
         joint=per_pair + groups * np.arange(len(pairs))[:, None],
+        scale=gas.fermi_wavenumbers[gas.majority],
     )

@@ -21,8 +21,11 @@ NAME = "pair_correlation"
 
 DIMENSIONS = ("pair", "separation")
 
+COUNT = Variable(DIMENSIONS, 0, "unordered pairs in the bin")
+COUNT_NAME = "pair_count"
+
 VARIABLES = {
-    "pair_correlation": Variable(DIMENSIONS, 0, "pair correlation g"),
+    "pair_correlation": Variable(DIMENSIONS, 0, "pair correlation, normalised by the densities"),
     "exchange_hole": Variable(
         DIMENSIONS,
         "-dimension",
@@ -51,13 +54,13 @@ def empty(grid: SeparationGrid) -> dict[str, NDArray[np.int64]]:
     Returns
     -------
     dict
-        ``pair_count`` (pair, separation): unordered pairs in each bin. ``moment_sum`` (joint) and
+        ``count`` (pair, separation): unordered pairs in each bin. ``moment_sum`` (joint) and
         ``moment_product`` (joint, joint): Σx and Σxxᵀ over snapshots, x the pairs of one snapshot
         in each joint bin. All int64, so that they add exactly in any order.
     """
     joint = grid.joint_bins
     return {
-        "pair_count": np.zeros((len(grid.pairs), grid.bins), dtype=np.int64),
+        "count": np.zeros((len(grid.pairs), grid.bins), dtype=np.int64),
         "moment_sum": np.zeros(joint, dtype=np.int64),
         "moment_product": np.zeros((joint, joint), dtype=np.int64),
     }
@@ -86,7 +89,7 @@ def tally(snapshots: Snapshots, grid: SeparationGrid, out: dict[str, NDArray[np.
         pair_of,
         grid.bins / grid.edges[-1],
         grid.joint,
-        out["pair_count"],
+        out["count"],
         out["moment_sum"],
         out["moment_product"],
     )
@@ -94,20 +97,35 @@ def tally(snapshots: Snapshots, grid: SeparationGrid, out: dict[str, NDArray[np.
 
 @kernel
 def _count_pairs(position, component, sides, pair_of, bins_per_length, count):
-    """Add the pairs of one snapshot, at their minimum-image separation, to `count`."""
+    """Add the pairs of one snapshot, at their minimum-image separation, to `count`.
+
+    The separations from one particle to those before it are worked out together, an axis at a time,
+    so that they run through the vector unit; only the counting is one by one.
+    """
     particles, dimension = position.shape
     bins = count.shape[1]
+    scaled = np.empty((dimension, particles))
     for i in range(particles):
+        for a in range(dimension):
+            scaled[a, i] = position[i, a]
+    square = np.empty(particles)
+    index = np.empty(particles, dtype=np.int32)
+    for i in range(particles):
+        square[:i] = 0.0
+        for a in range(dimension):
+            along = scaled[a]
+            here = along[i]
+            scale = (sides[a] * bins_per_length) ** 2
+            for j in range(i):
+                step = abs(along[j] - here)
+                step = min(step, 1.0 - step)
+                square[j] += scale * (step * step)
+        for j in range(i):
+            index[j] = np.int32(np.sqrt(square[j]))
         row = pair_of[component[i]]
         for j in range(i):
-            square = 0.0
-            for a in range(dimension):
-                step = abs(position[i, a] - position[j, a])
-                step = sides[a] * min(step, 1.0 - step)
-                square += step * step
-            index = int(np.sqrt(square) * bins_per_length)
-            if index < bins:
-                count[row[component[j]], index] += 1
+            if index[j] < bins:
+                count[row[component[j]], index[j]] += 1
 
 
 @kernel
@@ -129,11 +147,6 @@ def _tally_pairs(
             moment_sum[k] += vector[k]
             for l in range(vector.size):
                 moment_product[k, l] += vector[k] * vector[l]
-
-
-def counts(tallies: dict[str, NDArray[np.int64]]) -> NDArray[np.int64]:
-    """Return the counts behind the values (…, pair, separation)."""
-    return tallies["pair_count"]
 
 
 def values(

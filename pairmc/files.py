@@ -1,0 +1,55 @@
+"""Writing files whole or not at all."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable
+from pathlib import Path
+
+# Marks a file that is being written; what is left of one after a crash may be deleted.
+TEMPORARY = ".unfinished-"
+
+
+def write_whole(path: Path, write: Callable[[Path], None]) -> None:
+    """Write a file under a temporary name, force it to the disk, and only then give it its name.
+
+    A reader sees the old file or the new one, never a piece; after a crash or on a full disk the
+    old file is still there.
+
+    Parameters
+    ----------
+    path
+        The file's name; replaced where it exists.
+    write
+        Writes the contents to the path it is given, in the same folder.
+
+    Raises
+    ------
+    OSError
+        Where the disk refuses; the temporary file is removed.
+    """
+    temporary = path.with_name(f".{path.name}{TEMPORARY}{os.getpid()}")
+    try:
+        write(temporary)
+        with temporary.open("rb") as file:
+            os.fsync(file.fileno())
+        os.replace(temporary, path)
+    except BaseException:
+        temporary.unlink(missing_ok=True)
+        raise
+    sync_folder(path.parent)
+
+
+def sync_folder(folder: Path) -> None:
+    """Force a folder's list of names to the disk."""
+    handle = os.open(folder, os.O_RDONLY)
+    try:
+        os.fsync(handle)
+    finally:
+        os.close(handle)
+
+
+def remove_unfinished(folder: Path, name: str = "") -> None:
+    """Delete what crashed writers left in a folder: of one file, or of all where none is named."""
+    for leftover in folder.glob(f".{name}*{TEMPORARY}*"):
+        leftover.unlink(missing_ok=True)

@@ -1,0 +1,246 @@
+"""Builds the dataset of a run from its tallies: values, errors, expectation, audit, scales."""
+
+from __future__ import annotations
+
+import json
+from datetime import UTC, datetime
+from importlib.metadata import version
+from typing import Any
+
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+
+from pairmc.physics.observables import registry
+from pairmc.physics.observables.variable import Variable
+from pairmc.results import schema
+from pairmc.results.audit import INTERVAL_LEVEL, Audit, CountErrors, audit, count_errors
+from pairmc.results.collect import Collected
+from pairmc.results.scales import component_labels, scale_variables
+from pairmc.runfile.digest import canonical, digest
+from pairmc.runfile.run import RunFile
+
+Variables = dict[str, tuple[Any, ...]]
+
+
+def build_dataset(run: RunFile, collected: Collected) -> xr.Dataset:
+    """Return everything of a run's result but the kept snapshots.
+
+    Parameters
+    ----------
+    run
+        The run.
+    collected
+        Tallies of all its batches.
+
+    Returns
+    -------
+    xarray.Dataset
+        As documented in DEVELOPERS.md, "Result file".
+    """
+    variables: Variables = {
+        "snapshot_count": (
+            ("batch",),
+            np.full(run.batches, run.batch_size, dtype=np.int64),
+            {"units": "1", "long_name": "snapshots in the batch"},
+        )
+    }
+    coordinates: Variables = {
+        "batch": (
+            ("batch",),
+            np.arange(run.batches, dtype=np.int64),
+            {"units": "1", "long_name": "batch number"},
+        ),
+        "spin": (("spin",), component_labels(run.gas), {"long_name": "spin component"}),
+    }
+    variables |= scale_variables(run)
+    for name in run.observables:
+        more, where = _observable(run, name, collected)
+        variables |= more
+        coordinates |= where
+    return xr.Dataset(variables, coords=coordinates, attrs=attributes(run, collected.made))
+
+
+def attributes(run: RunFile, made: list[dict[str, str]]) -> dict[str, Any]:
+    """Return the global attributes of a result: what it is, and what made it."""
+    stamp = datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
+    program = f"pairmc {version('pairmc')}"
+    return {
+        "Conventions": schema.CONVENTIONS,
+        schema.SCHEMA_ATTRIBUTE: schema.schema_text(),
+        "title": run.title,
+        "source": f"{program}: direct draws of a free Fermi gas",
+        "history": f"{stamp} {program}: {run.snapshots} snapshots in {run.batches} batches",
+        "run_file": run.text,
+        "run_digest": digest(run),
+        "run_settings": json.dumps(canonical(run), sort_keys=True),
+        "seed": str(run.seed),
+        "made_with": json.dumps(made, sort_keys=True),
+        "normalisation": schema.NORMALISATION,
+        "ensemble": schema.ENSEMBLES["canonical"],
+    }
+
+
+def _observable(run: RunFile, name: str, collected: Collected) -> tuple[Variables, Variables]:
+    """Return the variables and coordinates of one observable."""
+    module, theory = registry.observable(name), registry.theory(name)
+    system = run.system()
+    grid = module.grid(run.observables[name], system)
+    tallies = collected.tallies[name]
+    counts, moments = tallies.stacked(), tallies.moments(run.snapshots)
+    expected, bulk = theory.expected(system, grid), theory.bulk(system, grid)
+    errors = count_errors(counts, run.snapshots * module.mean_counts(expected, grid))
+    judged = audit(module, grid, counts, moments, expected)
+
+    variables = _values(run, module, grid, counts.sum(axis=0), errors)
+    variables[module.COUNT_NAME] = (
+        ("batch", *module.COUNT.dimensions),
+        counts,
+        _describe(run, module.COUNT),
+    )
+    for key, variable in module.VARIABLES.items():
+        exact = _describe(run, variable, ", exact value for this finite system, bin average")
+        exact["expectation_source"] = "exact"
+        variables[f"{key}_expected"] = (variable.dimensions, expected[key], exact)
+        infinite = _describe(run, variable, ", infinite system of the same densities, bin average")
+        variables[f"{key}_bulk"] = (variable.dimensions, bulk[key], infinite)
+    variables |= _audit_variables(name, module.COUNT.dimensions, judged)
+    variables |= _moment_variables(name, grid, tallies.moment_sum, tallies.moment_product)
+
+    coordinates: Variables = {
+        key: (part.dimensions, part.values, _coordinate_attributes(run, key, part))
+        for key, part in grid.coordinates().items()
+    }
+    joint = np.arange(grid.joint_bins, dtype=np.int64)
+    for suffix in ("", "_other"):
+        key = f"{name}_joint_bin{suffix}"
+        coordinates[key] = ((key,), joint, {"units": "1", "long_name": "joint bin"})
+    merged = np.arange(len(judged.value), dtype=np.int64)
+    key = f"{name}_merged_bin"
+    coordinates[key] = ((key,), merged, {"units": "1", "long_name": "merged bin"})
+    return variables, coordinates
+
+
+def _values(
+    run: RunFile, module: Any, grid: Any, total: NDArray[np.int64], errors: CountErrors
+) -> Variables:
+    """Return values, standard errors and intervals of an observable's variables."""
+    values = module.values(total, run.snapshots, grid)
+    zero = module.values(np.zeros_like(errors.error), run.snapshots, grid)
+    spread = module.values(errors.error, run.snapshots, grid)
+    lower = module.values(errors.lower, run.snapshots, grid)
+    upper = module.values(errors.upper, run.snapshots, grid)
+    level = f"{100 * INTERVAL_LEVEL:g} %"
+    variables: Variables = {}
+    for key, variable in module.VARIABLES.items():
+        attributes = _describe(run, variable)
+        attributes["ancillary_variables"] = f"{key}_error"
+        variables[key] = (variable.dimensions, values[key], attributes)
+        variables[f"{key}_error"] = (
+            variable.dimensions,
+            spread[key] - zero[key],
+            _describe(run, variable, ", standard error over batches"),
+        )
+        variables[f"{key}_interval"] = (
+            (*variable.dimensions, "bound"),
+            np.stack([lower[key], upper[key]], axis=-1),
+            _describe(run, variable, f", {level} interval"),
+        )
+    return variables
+
+
+def _audit_variables(name: str, dimensions: tuple[str, ...], judged: Audit) -> Variables:
+    """Return the comparison of sample and expectation."""
+    bin_name = f"{name}_merged_bin"
+    spread = np.append(judged.difference, np.nan)[judged.merged]
+    test = judged.test
+    counted = {"units": "1"}
+    return {
+        f"{name}_merge": (
+            dimensions,
+            judged.merged,
+            counted | {"long_name": "merged bin that the bin belongs to, -1: none"},
+        ),
+        f"{name}_difference": (
+            dimensions,
+            spread,
+            counted
+            | {
+                "long_name": "value less expectation in standard errors, of the merged bin",
+                "comment": "Student's t with (batches - 1) degrees of freedom",
+            },
+        ),
+        f"{name}_merged_count": (
+            (bin_name,),
+            judged.value,
+            counted | {"long_name": "counts per snapshot in the merged bin"},
+        ),
+        f"{name}_merged_count_error": (
+            (bin_name,),
+            judged.error,
+            counted | {"long_name": "standard error over batches of counts per snapshot"},
+        ),
+        f"{name}_merged_count_expected": (
+            (bin_name,),
+            judged.expected,
+            counted | {"long_name": "exact counts per snapshot in the merged bin"},
+        ),
+        f"{name}_p_value": (
+            (),
+            test.p_value,
+            counted
+            | {
+                "long_name": "global p-value of sample against expectation",
+                "comment": "Hotelling's test over all merged bins of all pairs; covariance from "
+                "single snapshots",
+                "statistic": test.statistic,
+                "dimensions_tested": np.int64(test.dimensions),
+            },
+        ),
+    }
+
+
+def _moment_variables(name: str, grid: Any, total: Any, product: Any) -> Variables:
+    """Return the sums over snapshots from which covariances are worked out at reading."""
+    joint = f"{name}_joint_bin"
+    return {
+        f"{name}_joint": (
+            tuple(grid.coordinates())[:2],
+            grid.joint,
+            {"units": "1", "long_name": "joint bin that the bin belongs to"},
+        ),
+        f"{name}_moment_sum": (
+            (joint,),
+            total,
+            {"units": "1", "long_name": "sum over snapshots of the counts in a joint bin"},
+        ),
+        f"{name}_moment_product": (
+            (joint, f"{joint}_other"),
+            product,
+            {"units": "1", "long_name": "sum over snapshots of products of two joint bins' counts"},
+        ),
+    }
+
+
+def _unit(run: RunFile, power: int | str | None) -> str:
+    """Return a unit string for a power of the length unit."""
+    return run.gas.units.udunits(-run.gas.dimension if power == "-dimension" else int(power or 0))
+
+
+def _describe(run: RunFile, variable: Variable, more: str = "") -> dict[str, Any]:
+    """Return the attributes of a variable."""
+    return {"units": _unit(run, variable.length_power), "long_name": variable.long_name + more}
+
+
+def _coordinate_attributes(run: RunFile, key: str, part: Any) -> dict[str, Any]:
+    """Return the attributes of a coordinate; bounds have none of their own (CF 7.1)."""
+    if not part.long_name:
+        return {}
+    attributes = {"long_name": part.long_name}
+    if part.length_power is not None:
+        attributes["units"] = _unit(run, part.length_power)
+        if part.length_power and run.gas.units.length:
+            attributes["length_unit"] = run.gas.units.length
+    if key == "separation":
+        attributes["bounds"] = "separation_bounds"
+    return attributes

@@ -1,0 +1,103 @@
+"""Reads and checks result files."""
+
+from __future__ import annotations
+
+import json
+import os
+import warnings
+from pathlib import Path
+from typing import Any
+
+import netCDF4
+import xarray as xr
+
+from pairmc.errors import Problem, ResultFileError
+from pairmc.results import schema
+
+
+def load(path: str | os.PathLike[str]) -> xr.Dataset:
+    """Read a result file into memory and close it.
+
+    Parameters
+    ----------
+    path
+        The file.
+
+    Returns
+    -------
+    xarray.Dataset
+        Labels are text; every variable carries units and long_name.
+
+    Raises
+    ------
+    ResultFileError
+        Where the file is missing, damaged, of a newer schema, or no result of pairmc.
+    """
+    read_attributes(path)
+    try:
+        dataset = xr.load_dataset(path, engine="netcdf4")
+    except (OSError, RuntimeError, ValueError, AttributeError) as error:
+        raise _refusal(path, "a damaged file", f"({error})") from error
+    for name in dataset.coords:
+        if dataset[name].dtype.kind == "S":
+            dataset[name] = dataset[name].astype(str)
+    return dataset
+
+
+def read_attributes(path: str | os.PathLike[str]) -> dict[str, Any]:
+    """Return the global attributes of a result file once its schema has been checked.
+
+    Raises
+    ------
+    ResultFileError
+        As `load`.
+    """
+    if not Path(path).is_file():
+        got = "a folder" if Path(path).is_dir() else "no such file"
+        raise _refusal(path, got, "name a file that pairmc sample has written")
+    try:
+        with netCDF4.Dataset(path) as file:
+            attributes = {name: file.getncattr(name) for name in file.ncattrs()}
+    except (OSError, RuntimeError, UnicodeDecodeError) as error:
+        raise _refusal(
+            path, f"a file that cannot be read ({error})", "sample again, or restore it from a copy"
+        ) from error
+    _check_schema(path, attributes)
+    return attributes
+
+
+def run_settings(attributes: dict[str, Any]) -> dict[str, Any]:
+    """Return the canonical settings of the run that a result came from."""
+    settings: dict[str, Any] = json.loads(attributes["run_settings"])
+    return settings
+
+
+def _check_schema(path: str | os.PathLike[str], attributes: dict[str, Any]) -> None:
+    text = str(attributes.get(schema.SCHEMA_ATTRIBUTE, ""))
+    numbers = text.split(".")
+    if len(numbers) != 2 or not all(number.isdigit() for number in numbers):
+        raise _refusal(
+            path,
+            "a netCDF file without pairmc's schema number",
+            "name a file that pairmc sample has written",
+        )
+    major, minor = int(numbers[0]), int(numbers[1])
+    if major > schema.SCHEMA[0]:
+        raise _refusal(
+            path,
+            f"schema {text}",
+            "update pairmc to read it",
+            allowed=f"up to {schema.schema_text()}",
+        )
+    if (major, minor) > schema.SCHEMA:
+        warnings.warn(
+            f"{os.fspath(path)}: written with schema {text}, this is {schema.schema_text()}; "
+            "what is new in it is ignored",
+            stacklevel=3,
+        )
+
+
+def _refusal(
+    path: str | os.PathLike[str], got: str, advice: str, allowed: str = "a result of pairmc sample"
+) -> ResultFileError:
+    return ResultFileError(Problem(os.fspath(path), got, allowed, advice))

@@ -1,0 +1,128 @@
+"""Writes a result file: whole, or not at all."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from pathlib import Path
+from typing import Any
+
+import netCDF4
+import numpy as np
+import xarray as xr
+from numpy.typing import NDArray
+
+from pairmc.files import write_whole
+from pairmc.results import schema
+from pairmc.runfile.run import RunFile
+from pairmc.running.batch import kept_in_batch
+from pairmc.running.parts import Parts
+
+Block = tuple[int, NDArray[np.float32], NDArray[np.int8]]
+
+# Rows of kept snapshots in one chunk of the file hold about this many bytes.
+_CHUNK_BYTES = 1_000_000
+
+
+def kept_blocks(run: RunFile, parts: Parts) -> Iterator[Block]:
+    """Yield the kept snapshots batch by batch: number, position in length units, component."""
+    sides = np.array(run.system().sides)
+    for batch in range(run.batches):
+        if kept_in_batch(run, batch) == 0:
+            return
+        arrays, _ = parts.read(batch)
+        position = (arrays["kept.position"].astype(np.float64) * sides).astype(np.float32)
+        position[position >= sides.astype(np.float32)] = 0.0
+        yield batch, position, arrays["kept.component"]
+
+
+def write_result(path: Path, dataset: xr.Dataset, run: RunFile, blocks: Iterator[Block]) -> None:
+    """Write a result file under a temporary name and put it in place when it is complete.
+
+    Parameters
+    ----------
+    path
+        The result file.
+    dataset
+        All but the kept snapshots.
+    run
+        The run.
+    blocks
+        The kept snapshots, batch by batch; one batch is in memory at a time.
+
+    Raises
+    ------
+    OSError
+        Where the disk refuses.
+    """
+
+    def write(temporary: Path) -> None:
+        dataset.to_netcdf(temporary, engine="netcdf4", encoding=encoding(dataset))
+        kept = sum(kept_in_batch(run, batch) for batch in range(run.batches))
+        if kept:
+            with netCDF4.Dataset(temporary, "a") as file:
+                _append_kept(file, run, kept, blocks)
+
+    write_whole(path, write)
+
+
+def encoding(dataset: xr.Dataset) -> dict[Any, dict[str, Any]]:
+    """Return how each variable is stored: counts compressed in one chunk, no fill values."""
+    chosen: dict[Any, dict[str, Any]] = {}
+    for name, variable in dataset.variables.items():
+        if variable.dtype.kind == "S":
+            chosen[name] = {"dtype": "S1", "char_dim_name": f"{name}_characters"}
+            continue
+        chosen[name] = {"_FillValue": None}
+        if variable.dtype.kind == "i" and variable.ndim > 1:
+            chosen[name] |= {
+                "zlib": True,
+                "complevel": 1,
+                "shuffle": True,
+                "chunksizes": variable.shape,
+            }
+    return chosen
+
+
+def _append_kept(file: netCDF4.Dataset, run: RunFile, kept: int, blocks: Iterator[Block]) -> None:
+    """Add the variables of the kept snapshots, a batch at a time."""
+    particles, dimension = run.gas.particles, run.gas.dimension
+    file.createDimension("snapshot", kept)
+    file.createDimension("particle", particles)
+    rows = max(1, min(kept, _CHUNK_BYTES // (4 * particles * dimension)))
+
+    def create(name: str, kind: str, dimensions: tuple[str, ...], **attributes: Any) -> Any:
+        sizes = [len(file.dimensions[part]) for part in dimensions]
+        variable = file.createVariable(
+            name, kind, dimensions, fill_value=False, chunksizes=[rows, *sizes[1:]]
+        )
+        variable.setncatts(attributes)
+        return variable
+
+    along = ("snapshot", "particle")
+    position = create(
+        "position",
+        "f4",
+        (*along, "axis"),
+        units=run.gas.units.udunits(1),
+        long_name="position in the periodic box, from 0 to the side; NaN is padding",
+    )
+    component = create(
+        "component",
+        "i1",
+        along,
+        long_name="spin component of the particle",
+        flag_values=np.array([schema.NO_COMPONENT, *range(len(run.gas.components))], dtype=np.int8),
+        flag_meanings=" ".join(["padding", *run.gas.components]),
+    )
+    count = create("particle_count", "i4", ("snapshot",), units="1", long_name="particles")
+    batches = create(
+        "snapshot_batch", "i8", ("snapshot",), units="1", long_name="batch of the snapshot"
+    )
+    start = 0
+    for batch, where, which in blocks:
+        rows_here = slice(start, start + len(where))
+        position[rows_here] = where
+        component[rows_here] = which
+        count[rows_here] = np.count_nonzero(which != schema.NO_COMPONENT, axis=1)
+        batches[rows_here] = batch
+        start += len(where)

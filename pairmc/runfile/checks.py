@@ -1,0 +1,117 @@
+"""What must be given in a run file, and what must fit together."""
+
+from __future__ import annotations
+
+from bisect import bisect_left
+from collections.abc import Iterator
+from math import isqrt
+
+from pairmc.runfile.lines import Path
+from pairmc.runfile.models import (
+    LARGEST_BATCHES,
+    LARGEST_SNAPSHOTS,
+    SMALLEST_BATCHES,
+    Document,
+    GasTable,
+    SamplingTable,
+)
+from pairmc.runfile.problems import Finding, Refusal
+from pairmc.runfile.scale import check_scale
+
+
+def check(document: Document, refused: set[Path]) -> Iterator[Finding]:
+    """Yield what is missing and what contradicts itself, all of it.
+
+    Parameters
+    ----------
+    document
+        The tables, each value read on its own.
+    refused
+        Paths of what was given and refused already; nothing more is said about those.
+    """
+    if ("gas",) not in refused:
+        in_gas = {str(path[1]) for path in refused if path[0] == "gas"}
+        yield from _check_required(document.gas, in_gas)
+        yield from check_scale(document.gas, in_gas)
+    yield from _check_axes(document)
+    if not {("sampling", "snapshots"), ("sampling", "batches")} & refused:
+        yield from _check_batches(document.sampling)
+    observables = document.observables
+    if observables is not None and not any(path[0] == "observables" for path in refused):
+        yield from _check_observables(observables.pair_correlation is not None)
+
+
+def _check_required(gas: GasTable, refused: set[str]) -> Iterator[Finding]:
+    examples = {
+        "dimension": ("1, 2 or 3", "add dimension = 2"),
+        "particles": (
+            "one entry per spin component",
+            "add particles = { up = 49, down = 37 }",
+        ),
+    }
+    for key, (allowed, advice) in examples.items():
+        if getattr(gas, key) is None and key not in refused:
+            yield Finding(("gas", key), Refusal("nothing, and it is needed", allowed, advice))
+
+
+def _check_axes(document: Document) -> Iterator[Finding]:
+    """Yield complaints about lists that have not one entry per axis."""
+    dimension, box = document.gas.dimension, document.confinement
+    for key, given in (("axes", box.axes), ("sides", box.sides)):
+        if dimension is not None and isinstance(given, tuple) and len(given) != dimension:
+            wanted = "1 entry" if dimension == 1 else f"{dimension} entries"
+            yield Finding(
+                ("confinement", key),
+                Refusal(
+                    f"a list of {len(given)}",
+                    f"a list of {wanted}, as dimension = {dimension}",
+                    "give one entry per axis, or leave it out",
+                ),
+            )
+
+
+def _check_batches(sampling: SamplingTable) -> Iterator[Finding]:
+    """Yield the complaint about snapshots that do not divide into equal batches."""
+    snapshots, batches = sampling.snapshots, sampling.batches
+    if snapshots % batches == 0:
+        return
+    key = "snapshots" if "snapshots" in sampling.model_fields_set else "batches"
+    near = [str(number) for number in near_multiples(snapshots, batches)]
+    ways = [f"snapshots = {' or '.join(near)}"]
+    counts = [str(number) for number in near_divisors(snapshots, batches)]
+    if counts:
+        ways.append(f"batches = {' or '.join(counts)}")
+    by_default = "" if "batches" in sampling.model_fields_set else " (the default)"
+    yield Finding(
+        ("sampling", key),
+        Refusal(
+            f"{snapshots} snapshots in {batches} batches{by_default}",
+            "a number of snapshots that batches divides, so that all batches are of one size",
+            f"set {', or '.join(ways)}",
+        ),
+    )
+
+
+def _check_observables(any_given: bool) -> Iterator[Finding]:
+    if not any_given:
+        refusal = Refusal(
+            "an empty table",
+            "at least one observable: [observables.pair_correlation]",
+            "leave [observables] out to tally the pair correlation with its defaults",
+        )
+        yield Finding(("observables",), refusal, table=True)
+
+
+def near_multiples(snapshots: int, batches: int) -> list[int]:
+    """Return the multiples of `batches` next below and above `snapshots`, within the limits."""
+    below = snapshots // batches * batches
+    return [n for n in (below, below + batches) if batches <= n <= LARGEST_SNAPSHOTS]
+
+
+def near_divisors(snapshots: int, batches: int) -> list[int]:
+    """Return the divisors of `snapshots` next below and above `batches`, within the limits."""
+    small = [n for n in range(1, isqrt(snapshots) + 1) if snapshots % n == 0]
+    both = sorted({*small, *(snapshots // n for n in small)})
+    divisors = [n for n in both if SMALLEST_BATCHES <= n <= LARGEST_BATCHES]
+    place = bisect_left(divisors, batches)
+    return divisors[max(place - 1, 0) : place + 1]

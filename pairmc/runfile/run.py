@@ -1,0 +1,167 @@
+"""What a run is, once its file has been read and checked: one frozen value."""
+
+from __future__ import annotations
+
+import operator
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+from functools import lru_cache
+
+from pairmc.errors import InputError, Problem
+from pairmc.physics.gas import Gas
+from pairmc.physics.observables.pair_correlation_settings import Settings as PairCorrelationSettings
+from pairmc.physics.system import System, build_system
+from pairmc.runfile.models import SEED_LIMIT, Document
+from pairmc.runfile.problems import value_in_words
+from pairmc.runfile.scale import settle_scale
+from pairmc.units import ATOMIC_MASS, ELECTRON_MASS
+
+
+@dataclass(frozen=True)
+class RunFile:
+    """A run: the gas, its box, and what is sampled. Nothing in it needs a further check.
+
+    Parameters
+    ----------
+    title
+        One line; made from the gas where the file gives none.
+    path
+        The file it was read from, as it was named.
+    text
+        The file, verbatim.
+    gas
+        The gas, in the run's units.
+    sides
+        Ratio of the sides of the box, one number per axis.
+    sampler
+        ``"direct"``.
+    snapshots, batches
+        How many snapshots, in how many batches of equal size.
+    seed
+        From 0 to 2**128 − 1; 20261201 where the file gives none.
+    keep_snapshots
+        Snapshots with an index below this are stored; None stores all.
+    observables
+        Settings of what is tallied, by name.
+    mass_kilogram
+        Mass of one particle in kilograms; None where lengths have no unit or no mass is known.
+    """
+
+    title: str
+    path: str
+    text: str
+    gas: Gas
+    sides: tuple[float, ...]
+    sampler: str
+    snapshots: int
+    batches: int
+    seed: int
+    keep_snapshots: int | None
+    observables: Mapping[str, PairCorrelationSettings] = field(hash=False)
+    mass_kilogram: float | None
+
+    @property
+    def batch_size(self) -> int:
+        """Snapshots in one batch."""
+        return self.snapshots // self.batches
+
+    def system(self) -> System:
+        """Return the gas in its box with its filled orbitals; built once for equal gases."""
+        return _system(self.gas, self.sides)
+
+    def with_seed(self, seed: int) -> RunFile:
+        """Return the same run with another seed.
+
+        Raises
+        ------
+        InputError
+            Where the seed is no whole number from 0 to 2**128 − 1.
+        """
+        try:
+            number = -1 if isinstance(seed, bool) else operator.index(seed)
+        except TypeError:
+            number = -1
+        if not 0 <= number < SEED_LIMIT:
+            allowed = "a whole number, at least 0 and below 2^128"
+            raise InputError(Problem("seed", value_in_words(seed), allowed))
+        return replace(self, seed=number)
+
+    def understood(self) -> dict[str, str]:
+        """Return each quantity as it was understood, in the run's units.
+
+        Returns
+        -------
+        dict
+            ``total_density``, ``r_s``, ``fermi_wavenumber`` (of the majority component),
+            ``temperature`` and, where known, ``mass``.
+        """
+        gas = self.gas
+        echo = {
+            "total_density": _with_unit(gas.total_density, gas.units.length, -gas.dimension),
+            "r_s": _with_unit(gas.wigner_seitz_radius, gas.units.length, 1),
+            "fermi_wavenumber": _with_unit(
+                gas.fermi_wavenumbers[gas.majority], gas.units.length, -1
+            ),
+            "temperature": "0",
+        }
+        if self.mass_kilogram is not None:
+            electrons = gas.units.length == "bohr"
+            unit, name = (ELECTRON_MASS, "m_e") if electrons else (ATOMIC_MASS, "u")
+            echo["mass"] = f"{self.mass_kilogram / unit:.9g} {name}"
+        return echo
+
+
+def build_run(document: Document, path: str, text: str) -> RunFile:
+    """Return the run of a document that has passed all checks.
+
+    Parameters
+    ----------
+    document
+        The tables.
+    path, text
+        Where they were read, and what was read.
+    """
+    scale = settle_scale(document.gas)
+    particles = document.gas.particles or {}
+    gas = Gas(
+        dimension=document.gas.dimension or 0,
+        components=tuple(particles),
+        populations=tuple(particles.values()),
+        total_density=scale.total_density,
+        units=scale.units,
+    )
+    observables = document.observables
+    pair_correlation = None if observables is None else observables.pair_correlation
+    bins = PairCorrelationSettings().bins if pair_correlation is None else pair_correlation.bins
+    sampling = document.sampling
+    return RunFile(
+        title=document.title or _title(gas),
+        path=path,
+        text=text,
+        gas=gas,
+        sides=document.confinement.sides or (1.0,) * gas.dimension,
+        sampler=sampling.sampler,
+        snapshots=sampling.snapshots,
+        batches=sampling.batches,
+        seed=sampling.seed,
+        keep_snapshots=sampling.keep_snapshots,
+        observables={"pair_correlation": PairCorrelationSettings(bins)},
+        mass_kilogram=scale.mass_kilogram,
+    )
+
+
+@lru_cache(maxsize=8)
+def _system(gas: Gas, sides: tuple[float, ...]) -> System:
+    return build_system(gas, sides)
+
+
+def _title(gas: Gas) -> str:
+    parts = [f"{name} = {n}" for name, n in zip(gas.components, gas.populations, strict=True)]
+    return f"Free Fermi gas in {gas.dimension}D, {', '.join(parts)}"
+
+
+def _with_unit(number: float, unit: str, power: int) -> str:
+    """Return a number with length**power behind it, where lengths have a unit."""
+    if not unit:
+        return f"{number:.9g}"
+    return f"{number:.9g} {unit}" if power == 1 else f"{number:.9g} {unit}^{power}"

@@ -1,0 +1,131 @@
+"""One batch: a pure function of a run and a number."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from functools import lru_cache, partial
+from typing import Any
+
+import numpy as np
+from numpy.typing import NDArray
+from scipy import linalg  # noqa: F401  loads the linear algebra that limit_blas_threads limits
+from threadpoolctl import threadpool_limits
+
+from pairmc.errors import PairmcError
+from pairmc.physics.observables import registry
+from pairmc.physics.sampling.direct import DirectSampler
+from pairmc.physics.snapshots import Snapshots
+from pairmc.physics.system import System
+from pairmc.runfile.digest import digest
+from pairmc.runfile.run import RunFile
+from pairmc.streams import generator
+
+# About this many coordinates are drawn before they are tallied: it bounds the memory, and the time
+# after which a request to stop is heard.
+_COORDINATES_AT_A_TIME = 60_000
+
+Arrays = dict[str, NDArray[Any]]
+
+
+class StoppedError(PairmcError):
+    """A batch was asked to stop before it was finished."""
+
+
+@lru_cache(maxsize=1)
+def limit_blas_threads() -> None:
+    """Give the linear algebra one thread, for the whole process and for good.
+
+    Several batches run side by side; several threads each would slow them down four times and more.
+    """
+    threadpool_limits(1)
+
+
+def make_sampler(run: RunFile, batch: int, purpose: str = "sample") -> DirectSampler:
+    """Return the sampler of a batch at its first snapshot.
+
+    Parameters
+    ----------
+    run
+        The run.
+    batch
+        Batch number, from 0.
+    purpose
+        See `pairmc.streams`.
+    """
+    limit_blas_threads()
+    streams = partial(generator, run.seed, purpose, digest(run), batch)
+    return DirectSampler(run.system(), streams)
+
+
+def kept_in_batch(run: RunFile, batch: int) -> int:
+    """Return how many snapshots of a batch are stored: those with global index below the limit."""
+    if run.keep_snapshots is None:
+        return run.batch_size
+    return int(np.clip(run.keep_snapshots - batch * run.batch_size, 0, run.batch_size))
+
+
+def snapshots_at_a_time(run: RunFile) -> int:
+    """Return how many snapshots are drawn before they are tallied."""
+    return max(1, _COORDINATES_AT_A_TIME // (run.gas.particles * run.gas.dimension))
+
+
+def run_batch(run: RunFile, batch: int, stop: Callable[[], bool] = lambda: False) -> Arrays:
+    """Draw and tally one batch.
+
+    Parameters
+    ----------
+    run
+        The run.
+    batch
+        Batch number, from 0.
+    stop
+        Asked now and then; true ends the batch at once.
+
+    Returns
+    -------
+    dict of arrays
+        ``OBSERVABLE.TALLY`` for every tally, ``kept.position`` (snapshot, particle, axis) as
+        fractions of the sides, float32 in [0, 1), and ``kept.component`` (snapshot, particle).
+
+    Raises
+    ------
+    StoppedError
+        Where `stop` said so.
+    """
+    system = run.system()
+    sampler = make_sampler(run, batch)
+    modules = {name: registry.observable(name) for name in run.observables}
+    grids = {name: modules[name].grid(run.observables[name], system) for name in modules}
+    tallies = {name: modules[name].empty(grids[name]) for name in modules}
+    keep = kept_in_batch(run, batch)
+    kept: list[Snapshots] = []
+    done = 0
+    while done < run.batch_size:
+        if stop():
+            raise StoppedError(f"batch {batch} stopped")
+        count = min(snapshots_at_a_time(run), run.batch_size - done)
+        snapshots = sampler.draw(count)
+        for name, module in modules.items():
+            module.tally(snapshots, grids[name], tallies[name])
+        if done < keep:
+            wanted = slice(keep - done)
+            kept.append(Snapshots(snapshots.position[wanted], snapshots.component[wanted]))
+        done += count
+    arrays = {f"{name}.{key}": part for name in tallies for key, part in tallies[name].items()}
+    return arrays | _stack(kept, system)
+
+
+def _stack(kept: list[Snapshots], system: System) -> Arrays:
+    """Return the kept snapshots of a batch as two arrays."""
+    gas = system.gas
+    if not kept:
+        return {
+            "kept.position": np.empty((0, gas.particles, gas.dimension), dtype=np.float32),
+            "kept.component": np.empty((0, gas.particles), dtype=np.int8),
+        }
+    position = np.concatenate([part.position for part in kept]).astype(np.float32)
+    position[position >= 1.0] = 0.0  # rounded up to the other face of the box
+    return {
+        "kept.position": position,
+        "kept.component": np.concatenate([part.component for part in kept]),
+    }

@@ -1,0 +1,1 @@
+"""Brute force to test against: nothing here imports the package or shares a method with it."""
