@@ -93,8 +93,10 @@ class SeparationGrid:
         along = ("separation",)
         return {
             "pair": Coordinate(("pair",), labels, None, "pair of spin components"),
-            "separation": Coordinate(along, centres, 1, "separation of two particles, bin centre"),
-            "separation_bounds": Coordinate((*along, "bound"), bounds, 1, ""),
+            "separation": Coordinate(along, centres, 1, "separation of two particles"),
+            "separation_bounds": Coordinate(
+                (*along, "bound"), bounds, 1, "separation of two particles"
+            ),
             "scaled_separation": Coordinate(
                 along, self.scale * centres, 0, "separation times k_F of the majority component"
             ),

@@ -82,9 +82,11 @@ class Audit:
     ----------
     merged : array (pair, separation) of int64
         Merged bin of every bin, −1 where there are too few counts for any.
-    value, error, expected, difference : array (merged,)
-        Counts per snapshot in each merged bin: mean, standard error over batches, expectation,
-        and (mean − expectation)/error, which is Student's t with batches − 1 degrees of freedom.
+    value, error, expected : array (merged,)
+        The observable's main variable in each merged bin: mean, standard error over batches,
+        expectation.
+    difference : array (merged,)
+        (value − expected)/error: Student's t with batches − 1 degrees of freedom.
     test
         Global test over all merged bins.
     """
@@ -128,11 +130,12 @@ def audit(
     per_batch = np.stack([sum_by_group(row, merged, size) for row in counts])
     per_batch *= counts.shape[0] / M
     value, error = per_batch.mean(axis=0), standard_error(per_batch)
+    ideal = sum_by_group(grid.ideal, merged, size)
     return Audit(
         merged=merged,
-        value=value,
-        error=error,
-        expected=predicted,
+        value=value / ideal,
+        error=error / ideal,
+        expected=predicted / ideal,
         difference=_ratio(value - predicted, error, predicted),
         test=hotelling(moments.merged(groups), predicted),
     )

@@ -104,7 +104,8 @@ def _observable(run: RunFile, name: str, collected: Collected) -> tuple[Variable
         variables[f"{key}_expected"] = (variable.dimensions, expected[key], exact)
         infinite = _describe(run, variable, ", infinite system of the same densities, bin average")
         variables[f"{key}_bulk"] = (variable.dimensions, bulk[key], infinite)
-    variables |= _audit_variables(name, module.COUNT.dimensions, judged)
+    variables |= _audit_variables(run, name, module, judged)
+    variables |= _headline(run, module, grid, judged)
     variables |= _moment_variables(name, grid, tallies.moment_sum, tallies.moment_product)
 
     coordinates: Variables = {
@@ -149,8 +150,35 @@ def _values(
     return variables
 
 
-def _audit_variables(name: str, dimensions: tuple[str, ...], judged: Audit) -> Variables:
+def _headline(run: RunFile, module: Any, grid: Any, judged: Audit) -> Variables:
+    """Return the value named first, from the innermost merged bin of each row."""
+    name, variable = module.HEADLINE
+    first = judged.merged[:, 0]
+
+    def of(values: NDArray[np.float64]) -> Any:
+        return module.headline(np.append(values, np.nan)[first], grid)
+
+    nothing = np.zeros(len(judged.value))
+    return {
+        name: (variable.dimensions, of(judged.value), _describe(run, variable)),
+        f"{name}_error": (
+            variable.dimensions,
+            np.abs(of(judged.error) - of(nothing)),
+            _describe(run, variable, ", standard error over batches"),
+        ),
+        f"{name}_expected": (
+            variable.dimensions,
+            of(judged.expected),
+            _describe(run, variable, ", exact value for this finite system"),
+        ),
+    }
+
+
+def _audit_variables(run: RunFile, name: str, module: Any, judged: Audit) -> Variables:
     """Return the comparison of sample and expectation."""
+    main = module.VARIABLES[module.MAIN]
+    dimensions, words = main.dimensions, main.long_name
+    about = {"units": _unit(run, main.length_power)}
     bin_name = f"{name}_merged_bin"
     spread = np.append(judged.difference, np.nan)[judged.merged]
     test = judged.test
@@ -170,20 +198,20 @@ def _audit_variables(name: str, dimensions: tuple[str, ...], judged: Audit) -> V
                 "comment": "Student's t with (batches - 1) degrees of freedom",
             },
         ),
-        f"{name}_merged_count": (
+        f"{name}_merged": (
             (bin_name,),
             judged.value,
-            counted | {"long_name": "counts per snapshot in the merged bin"},
+            about | {"long_name": f"{words}, merged bin"},
         ),
-        f"{name}_merged_count_error": (
+        f"{name}_merged_error": (
             (bin_name,),
             judged.error,
-            counted | {"long_name": "standard error over batches of counts per snapshot"},
+            about | {"long_name": f"{words}, merged bin, standard error over batches"},
         ),
-        f"{name}_merged_count_expected": (
+        f"{name}_merged_expected": (
             (bin_name,),
             judged.expected,
-            counted | {"long_name": "exact counts per snapshot in the merged bin"},
+            about | {"long_name": f"{words}, merged bin, exact value for this finite system"},
         ),
         f"{name}_p_value": (
             (),
@@ -233,9 +261,7 @@ def _describe(run: RunFile, variable: Variable, more: str = "") -> dict[str, Any
 
 
 def _coordinate_attributes(run: RunFile, key: str, part: Any) -> dict[str, Any]:
-    """Return the attributes of a coordinate; bounds have none of their own (CF 7.1)."""
-    if not part.long_name:
-        return {}
+    """Return the attributes of a coordinate."""
     attributes = {"long_name": part.long_name}
     if part.length_power is not None:
         attributes["units"] = _unit(run, part.length_power)

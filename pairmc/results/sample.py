@@ -3,7 +3,9 @@
 from __future__ import annotations
 
 import os
+import tempfile
 import threading
+import warnings
 from collections.abc import Callable
 from concurrent.futures import ThreadPoolExecutor
 from functools import partial
@@ -20,6 +22,7 @@ from pairmc.results.dataset import build_dataset
 from pairmc.results.load import load, read_attributes, run_settings
 from pairmc.results.write import kept_blocks, write_result
 from pairmc.runfile.digest import canonical, differing_keys, digest
+from pairmc.runfile.read import read_run_file
 from pairmc.runfile.run import RunFile
 from pairmc.running.batch import run_batch
 from pairmc.running.campaign import missing_batches, run_batches
@@ -46,6 +49,50 @@ class Progress(NamedTuple):
 def default_result_path(run: RunFile) -> Path:
     """Return the run file's stem with .nc, beside it."""
     return Path(run.path).with_suffix(".nc")
+
+
+def sample(
+    run: RunFile | str | os.PathLike[str],
+    into: str | os.PathLike[str] | None = None,
+    workers: int | None = None,
+) -> xr.Dataset:
+    """Sample a run and return its result.
+
+    Parameters
+    ----------
+    run
+        A run, or the path of a run file.
+    into
+        Result file to write, which goes on where an interrupted one ended; None keeps nothing.
+    workers
+        Batches drawn side by side; None takes the cores that this process may use. The numbers are
+        the same for any.
+
+    Returns
+    -------
+    xarray.Dataset
+        As documented in DEVELOPERS.md, "Result file".
+
+    Raises
+    ------
+    InputError
+        Where the run file or the output is refused.
+    """
+    known = run if isinstance(run, RunFile) else read_run_file(run)
+    count = workers or available_cores()
+    if into is not None:
+        return sample_into(known, Path(into), count, warn=_warn)
+    with tempfile.TemporaryDirectory() as folder:
+        return sample_into(known, Path(folder) / "result.nc", count, warn=_warn)
+
+
+def available_cores() -> int:
+    """Return the number of cores this process may use."""
+    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+
+
+def _warn(message: str) -> None:
+    warnings.warn(message, stacklevel=3)
 
 
 def sample_into(

@@ -56,13 +56,30 @@ def write_result(path: Path, dataset: xr.Dataset, run: RunFile, blocks: Iterator
     """
 
     def write(temporary: Path) -> None:
-        dataset.to_netcdf(temporary, engine="netcdf4", encoding=encoding(dataset))
+        bare, bounds = _without_bounds(dataset)
+        bare.to_netcdf(temporary, engine="netcdf4", encoding=encoding(dataset))
         kept = sum(kept_in_batch(run, batch) for batch in range(run.batches))
-        if kept:
-            with netCDF4.Dataset(temporary, "a") as file:
+        with netCDF4.Dataset(temporary, "a") as file:
+            for name, edges in bounds.items():
+                file[name].setncattr("bounds", edges)
+            if kept:
                 _append_kept(file, run, kept, blocks)
 
     write_whole(path, write)
+
+
+def _without_bounds(dataset: xr.Dataset) -> tuple[xr.Dataset, dict[str, str]]:
+    """Return the dataset without its `bounds` attributes, and these by coordinate.
+
+    Where xarray sees such an attribute it takes units and long_name away from the bounds, and every
+    variable of a result carries its own.
+    """
+    bare, bounds = dataset.copy(), {}
+    for name in dataset.coords:
+        if "bounds" in dataset[name].attrs:
+            bare[name].attrs = dict(dataset[name].attrs)
+            bounds[str(name)] = bare[name].attrs.pop("bounds")
+    return bare, bounds
 
 
 def encoding(dataset: xr.Dataset) -> dict[Any, dict[str, Any]]:

@@ -13,7 +13,7 @@ from numpy.typing import NDArray
 from pairmc.compiled import kernel
 from pairmc.physics.grids import SeparationGrid, separation_grid
 from pairmc.physics.observables.pair_correlation_settings import Settings
-from pairmc.physics.observables.variable import Variable
+from pairmc.physics.observables.variable import Headline, Variable
 from pairmc.physics.snapshots import Snapshots
 from pairmc.physics.system import System
 
@@ -24,6 +24,9 @@ DIMENSIONS = ("pair", "separation")
 COUNT = Variable(DIMENSIONS, 0, "unordered pairs in the bin")
 COUNT_NAME = "pair_count"
 
+# The variable that counts divided by (snapshots · grid.ideal) give.
+MAIN = "pair_correlation"
+
 VARIABLES = {
     "pair_correlation": Variable(DIMENSIONS, 0, "pair correlation, normalised by the densities"),
     "exchange_hole": Variable(
@@ -33,6 +36,15 @@ VARIABLES = {
         "first, less its mean density",
     ),
 }
+
+HEADLINE = Headline(
+    "hole_depth",
+    Variable(
+        ("pair",),
+        "-dimension",
+        "depth of the exchange hole: density missing next to a particle, innermost merged bin",
+    ),
+)
 
 
 def grid(settings: Settings, system: System) -> SeparationGrid:
@@ -188,3 +200,8 @@ def mean_counts(
 ) -> NDArray[np.float64]:
     """Return the pairs per snapshot in each bin (pair, separation) if the values are `expected`."""
     return expected["pair_correlation"] * grid.ideal
+
+
+def headline(correlation: NDArray[np.float64], grid: SeparationGrid) -> NDArray[np.float64]:
+    """Return the depth of the hole n_s'(1 − g), where g (pair,) is that next to contact."""
+    return grid.density_second * (1.0 - correlation)

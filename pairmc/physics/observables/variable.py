@@ -21,3 +21,18 @@ class Variable(NamedTuple):
     dimensions: tuple[str, ...]
     length_power: int | Literal["-dimension"]
     long_name: str
+
+
+class Headline(NamedTuple):
+    """What is named first when a result is described: one value for each row of the observable.
+
+    Parameters
+    ----------
+    name
+        Its name in the result file.
+    variable
+        Its dimension, unit and meaning.
+    """
+
+    name: str
+    variable: Variable

@@ -1,0 +1,104 @@
+"""``pairmc check``: what a run is and what it costs, without drawing anything."""
+
+from __future__ import annotations
+
+from typing import TYPE_CHECKING
+
+import click
+
+from pairmc.cli import text
+
+if TYPE_CHECKING:
+    from pairmc.runfile.run import RunFile
+
+
+_WORDS = {
+    "total_density": "total density",
+    "r_s": "r_s",
+    "fermi_wavenumber": "k_F of the majority component",
+}
+
+
+@click.command()
+@click.argument("run_file", metavar="RUN.toml")
+def check(run_file: str) -> None:
+    """Read a run file and say what it means: scales, shells, time, memory, file size.
+
+    Nothing is drawn and nothing is written. A run file with mistakes is refused, all of them at
+    once.
+    """
+    from pairmc.runfile.read import read_run_file
+    from pairmc.running.cost import FIRST_COMPILATION, estimate
+
+    run = read_run_file(run_file)
+    gas, system = run.gas, run.system()
+    lines = [run.title, ""]
+    lines += [f"  {_WORDS.get(key, key)}: {value}" for key, value in run.understood().items()]
+    length = gas.units.length
+    sides = " × ".join(f"{side:.5g}" for side in system.sides)
+    lines.append(f"  box: {sides} {length}".rstrip() + ", periodic")
+    if gas.polarisation is not None:
+        lines.append(f"  polarisation: {gas.polarisation:.5g}")
+    lines += ["", _components(run), ""]
+    lines += shell_messages(run)
+    lines += _units(run)
+    cost = estimate(run)
+    lines.append(
+        f"cost: {run.snapshots} snapshots in {run.batches} batches, "
+        f"{text.duration(cost.seconds)} on one core (the very first run compiles for "
+        f"{text.duration(FIRST_COMPILATION)} more), memory about {text.size(cost.memory)}, "
+        f"file about {text.size(cost.file)}"
+    )
+    click.echo("\n".join(lines))
+
+
+def _components(run: RunFile) -> str:
+    """Return the table of components."""
+    gas = run.gas
+    head = ["component", "particles", "density", "k_F", "1/k_F"]
+    energies = gas.fermi_energies
+    if energies is not None:
+        head += ["E_F"] + (["T_F"] if gas.units.joules is not None else [])
+    rows = [head]
+    for index, name in enumerate(gas.components):
+        wavenumber = gas.fermi_wavenumbers[index]
+        row = [
+            name,
+            str(gas.populations[index]),
+            text.with_unit(gas.densities[index], gas.units.length, -gas.dimension),
+            text.with_unit(wavenumber, gas.units.length, -1),
+            text.with_unit(1 / wavenumber, gas.units.length),
+        ]
+        if energies is not None:
+            row.append(text.energy(energies[index], gas.units))
+            warmth = text.energy_as_temperature(energies[index], gas.units)
+            if warmth is not None:
+                row.append(warmth)
+        rows.append(row)
+    return text.table(rows)
+
+
+def shell_messages(run: RunFile) -> list[str]:
+    """Return a line for each component: its shell is closed, or open and which numbers close it."""
+    from pairmc.physics.orbitals import nearest_closed
+
+    system = run.system()
+    lines = []
+    for name, occupation in zip(run.gas.components, system.occupations, strict=True):
+        if occupation.closed:
+            lines.append(f"{name}: closed shell, one determinant of {occupation.population}")
+            continue
+        near = " and ".join(map(str, nearest_closed(system.axes, occupation.population)))
+        lines.append(
+            f"{name}: open shell, {occupation.valence} of {occupation.degeneracy} orbitals of the "
+            f"last level filled; snapshots are an equal mixture of all fillings. Nearest closed "
+            f"shells: {near}"
+        )
+    return lines
+
+
+def _units(run: RunFile) -> list[str]:
+    """Return what is missing for energies, if anything."""
+    if run.gas.units.kinetic is None:
+        return ["energies: unknown; give [gas] mass to have E_F and T_F"]
+    return []

@@ -1,0 +1,27 @@
+"""``pairmc plot``: the picture of a result."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from pathlib import Path
+
+import click
+
+
+@click.command()
+@click.argument("files", metavar="FILE…", nargs=-1, required=True)
+@click.option(
+    "--into",
+    "picture",
+    metavar="PICTURE",
+    required=True,
+    help="Picture to write: .png, .pdf, .svg.",
+)
+def plot(files: Sequence[str], picture: str) -> None:
+    """Draw the exchange hole of result files: sampled, exact for this system, infinite system."""
+    from pairmc.figures.draw import draw, save
+    from pairmc.results.load import load
+
+    figure = draw([load(file) for file in files])
+    save(figure, Path(picture))
+    click.echo(f"picture: {picture}", err=True)

@@ -1,0 +1,155 @@
+"""How pictures look: sizes of a journal page, fonts, colours, units in words.
+
+Colours differ in luminance as well, and nothing is told apart by colour alone: what is sampled has
+markers, what is exact a thin line, the infinite system a broad dashed one.
+"""
+
+from __future__ import annotations
+
+import textwrap
+from collections.abc import Iterator
+from contextlib import contextmanager
+from math import floor, log10
+from typing import Any
+
+from pairmc.errors import InputError, Problem
+
+# Width of one column and of both columns of a journal page, millimetres.
+COLUMN = 85.0
+PAGE = 170.0
+MILLIMETRES_PER_INCH = 25.4
+
+# Points; nothing is set smaller than the first.
+FONT_SIZE = 7.0
+TITLE_SIZE = 8.0
+
+DARK = "#000000"
+LIKE = "#0a5a9c"
+UNLIKE = "#c4690a"
+LIGHT = "#b8b8b8"
+BAND = "#e6e6e6"
+
+SETTINGS: dict[str, Any] = {
+    "font.family": ["DejaVu Sans"],
+    "font.size": FONT_SIZE,
+    "axes.labelsize": FONT_SIZE,
+    "axes.titlesize": FONT_SIZE,
+    "axes.titlepad": 4.0,
+    "axes.labelpad": 2.5,
+    "axes.linewidth": 0.6,
+    "xtick.labelsize": FONT_SIZE,
+    "ytick.labelsize": FONT_SIZE,
+    "xtick.direction": "in",
+    "ytick.direction": "in",
+    "xtick.major.width": 0.6,
+    "ytick.major.width": 0.6,
+    "xtick.major.size": 2.5,
+    "ytick.major.size": 2.5,
+    "legend.fontsize": FONT_SIZE,
+    "legend.title_fontsize": FONT_SIZE,
+    "legend.frameon": False,
+    "legend.borderpad": 0.2,
+    "figure.titlesize": TITLE_SIZE,
+    "figure.dpi": 300.0,
+    "savefig.dpi": 300.0,
+    "mathtext.fontset": "dejavusans",
+    "pdf.fonttype": 42,
+    "svg.hashsalt": "pairmc",
+}
+
+_SUPERSCRIPTS = str.maketrans("-0123456789", "⁻⁰¹²³⁴⁵⁶⁷⁸⁹")
+_UNIT_WORDS = {"um": "µm", "angstrom": "Å"}
+
+
+@contextmanager
+def style() -> Iterator[None]:
+    """Draw with these settings alone, whatever the user's own settings of matplotlib are.
+
+    Raises
+    ------
+    InputError
+        Where matplotlib is not installed.
+    """
+    try:
+        import matplotlib
+    except ModuleNotFoundError as error:
+        if error.name != "matplotlib":
+            raise
+        raise InputError(
+            Problem("pictures", "no matplotlib here", "", "pip install 'pairmc[plot]'")
+        ) from error
+    with matplotlib.rc_context():
+        matplotlib.rcdefaults()
+        matplotlib.rcParams.update(SETTINGS)
+        yield
+
+
+def inches(width: float, height: float) -> tuple[float, float]:
+    """Return a size in millimetres as inches."""
+    return width / MILLIMETRES_PER_INCH, height / MILLIMETRES_PER_INCH
+
+
+def power_of(base: str, power: int) -> str:
+    """Return ``base`` to a power, in print: ``µm⁻²``, ``10¹²``."""
+    return base if power == 1 else base + str(power).translate(_SUPERSCRIPTS)
+
+
+def unit_in_words(length_unit: str, power: int, exponent: int = 0) -> str:
+    """Return a power of a length unit for the label of an axis.
+
+    Parameters
+    ----------
+    length_unit
+        As in a result file: ``um``, ``bohr``; empty where the run gives none.
+    power
+        Of the length.
+    exponent
+        The numbers at the ticks are to be multiplied by 10 to this.
+    """
+    base = _UNIT_WORDS.get(length_unit, length_unit)
+    if base:
+        unit = power_of(base, power)
+    else:
+        unit = "length unit" if power == 1 else power_of("length unit", power)
+    return f"{power_of('10', exponent)} {unit}" if exponent else unit
+
+
+def exponent_for(largest: float) -> int:
+    """Return the power of ten to set beside the unit, 0 where the numbers are short without."""
+    exponent = floor(log10(largest))
+    return 0 if -2 <= exponent <= 2 else exponent
+
+
+def text_width(text: str, size: float) -> float:
+    """Return the width of a plain text in millimetres."""
+    from matplotlib.textpath import TextPath
+
+    box = TextPath((0.0, 0.0), literal(text), size=size).get_extents()
+    return float(box.width) * MILLIMETRES_PER_INCH / 72.0 if text.strip() else 0.0
+
+
+def wrap(text: str, width: float, size: float, lines: int = 3) -> str:
+    """Break a plain text into lines that are no wider than `width` millimetres.
+
+    Parameters
+    ----------
+    text
+        One line of text.
+    width
+        Millimetres.
+    size
+        Of the font, points.
+    lines
+        At most so many lines; what is left is cut and marked with an ellipsis.
+    """
+    characters = max(len(text), 1)
+    while True:
+        broken = textwrap.wrap(text, characters, max_lines=lines, placeholder=" …")
+        if characters <= 2 or all(text_width(line, size) <= width for line in broken):
+            return "\n".join(broken)
+        characters -= 1
+
+
+def literal(text: str) -> str:
+    """Return a text in which no dollar sign begins a formula."""
+    return text.replace("$", r"\$")
