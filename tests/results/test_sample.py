@@ -1,0 +1,148 @@
+"""Sampling into a file: resumed equals uninterrupted, other runs' files are never touched."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from pathlib import Path
+
+import numpy as np
+import pytest
+import xarray as xr
+
+import pairmc
+from pairmc.errors import InputError
+from pairmc.results import sample as sample_module
+from pairmc.results.load import load
+from pairmc.results.sample import Progress, sample_into
+from pairmc.runfile.run import RunFile
+from pairmc.running.parts import Parts
+from tests.conftest import same_data
+
+Variant = Callable[..., RunFile]
+
+
+class PlannedStopError(Exception):
+    """Raised where a test interrupts a run."""
+
+
+def stop_after(batches: int) -> Callable[[Progress], None]:
+    def report(progress: Progress) -> None:
+        if progress.drawn == batches:
+            raise PlannedStopError
+
+    return report
+
+
+def test_the_data_are_the_same_for_any_number_of_workers(
+    small_run: RunFile, small_result: Path, tmp_path: Path
+) -> None:
+    for workers in (2, 5):
+        result = sample_into(small_run, tmp_path / f"{workers}.nc", workers)
+        assert same_data(result, load(small_result)) == []
+
+
+def test_resumed_equals_uninterrupted(
+    small_run: RunFile, small_result: Path, tmp_path: Path
+) -> None:
+    path = tmp_path / "run.nc"
+    with pytest.raises(PlannedStopError):
+        sample_into(small_run, path, report=stop_after(3))
+    parts = Parts(tmp_path / "run.nc.parts")
+    assert parts.finished() == [0, 1, 2]
+    assert not path.exists()
+    drawn = []
+    result = sample_into(small_run, path, report=lambda progress: drawn.append(progress.drawn))
+    assert drawn[-1] == 5
+    assert same_data(result, load(small_result)) == []
+    assert [each.name for each in tmp_path.iterdir()] == ["run.nc"]
+
+
+def test_a_damaged_part_is_named_and_drawn_again(
+    small_run: RunFile, small_result: Path, tmp_path: Path
+) -> None:
+    path = tmp_path / "run.nc"
+    with pytest.raises(PlannedStopError):
+        sample_into(small_run, path, report=stop_after(3))
+    damaged = Parts(tmp_path / "run.nc.parts").path(1)
+    damaged.write_bytes(damaged.read_bytes()[:-40])
+    said: list[str] = []
+    result = sample_into(small_run, path, warn=said.append)
+    assert len(said) == 1
+    assert "batch-0000001.npz is damaged" in said[0]
+    assert same_data(result, load(small_result)) == []
+
+
+def test_a_complete_run_is_not_drawn_again(small_run: RunFile, small_result: Path) -> None:
+    before = small_result.read_bytes()
+    said: list[str] = []
+    result = sample_into(small_run, small_result, warn=said.append)
+    assert "holds all 8 batches already" in said[0]
+    assert small_result.read_bytes() == before
+    assert same_data(result, load(small_result)) == []
+
+
+def test_the_result_of_another_run_is_refused_and_left(
+    variant: Variant, small_result: Path
+) -> None:
+    before = small_result.read_bytes()
+    other = variant(("up = 9", "up = 13"))
+    with pytest.raises(InputError, match=r"gas\.populations"):
+        sample_into(other, small_result)
+    assert small_result.read_bytes() == before
+
+
+def test_the_parts_of_another_run_are_refused_and_left(
+    variant: Variant, small_run: RunFile, tmp_path: Path
+) -> None:
+    path = tmp_path / "run.nc"
+    with pytest.raises(PlannedStopError):
+        sample_into(small_run, path, report=stop_after(2))
+    with pytest.raises(InputError, match="unfinished batches of another run"):
+        sample_into(variant(("seed = 11", "seed = 12")), path)
+    assert Parts(tmp_path / "run.nc.parts").finished() == [0, 1]
+
+
+@pytest.mark.parametrize("place", ["missing/run.nc", "."])
+def test_a_place_that_cannot_be_written_is_refused(
+    small_run: RunFile, tmp_path: Path, place: str
+) -> None:
+    with pytest.raises(InputError):
+        sample_into(small_run, tmp_path / place)
+    assert list(tmp_path.iterdir()) == []
+
+
+def test_parts_stay_until_the_result_has_been_read_back(
+    small_run: RunFile, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    def spoilt(path: Path) -> xr.Dataset:
+        dataset = load(path)
+        dataset["pair_count"][3, 0, 5] += 1
+        return dataset
+
+    monkeypatch.setattr(sample_module, "load", spoilt)
+    with pytest.raises(pairmc.errors.PairmcError, match="pair_count was not read back"):
+        sample_into(small_run, tmp_path / "run.nc")
+    assert len(Parts(tmp_path / "run.nc.parts").finished()) == 8
+
+
+def test_the_python_function_takes_a_path_and_keeps_nothing(
+    small_result: Path, tmp_path: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.chdir(tmp_path)
+    text = load(small_result).attrs["run_file"]
+    (tmp_path / "run.toml").write_text(text)
+    result = pairmc.sample(tmp_path / "run.toml")
+    assert same_data(result, load(small_result)) == []
+    assert [each.name for each in tmp_path.iterdir()] == ["run.toml"]
+
+
+def test_snapshots_can_be_drawn_without_a_file(small_run: RunFile) -> None:
+    some = pairmc.draw_snapshots(small_run, 60)
+    assert some["position"].shape == (60, 14, 2)
+    few = pairmc.draw_snapshots(small_run, 7)
+    np.testing.assert_array_equal(few["position"], some["position"][:7])
+    other = pairmc.draw_snapshots(small_run, 7, seed=5)
+    assert not np.isin(other["position"], some["position"]).any()
+    for count in (0, -1, 2.5, True):
+        with pytest.raises(InputError):
+            pairmc.draw_snapshots(small_run, count)
