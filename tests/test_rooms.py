@@ -75,9 +75,7 @@ def forbidden(source: str, path: str) -> list[str]:
         elif top in HOMES:
             if room not in HOMES[top] and path not in HOMES[top]:
                 wrong.append(module)
-        elif room == "physics" and top not in PHYSICS_MAY_USE:
-            wrong.append(module)
-        elif top not in STANDARD:
+        elif (room == "physics" and top not in PHYSICS_MAY_USE) or top not in STANDARD:
             wrong.append(module)
     return wrong
 
