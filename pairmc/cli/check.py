@@ -40,7 +40,7 @@ def check(run_file: str) -> None:
     if gas.polarisation is not None:
         lines.append(f"  polarisation: {gas.polarisation:.5g}")
     lines += ["", _components(run), ""]
-    lines += shell_messages(run)
+    lines += _closed_shells(run) + open_shell_messages(run)
     lines += _units(run)
     cost = estimate(run)
     lines.append(
@@ -78,22 +78,30 @@ def _components(run: RunFile) -> str:
     return text.table(rows)
 
 
-def shell_messages(run: RunFile) -> list[str]:
-    """Return a line for each component: its shell is closed, or open and which numbers close it."""
+def _closed_shells(run: RunFile) -> list[str]:
+    """Return a line for each component whose shell is closed."""
+    occupations = zip(run.gas.components, run.system().occupations, strict=True)
+    return [
+        f"{name}: closed shell, one determinant of {occupation.population}"
+        for name, occupation in occupations
+        if occupation.closed
+    ]
+
+
+def open_shell_messages(run: RunFile) -> list[str]:
+    """Return a line for each component whose shell is open, with the numbers that close it."""
     from pairmc.physics.orbitals import nearest_closed
 
     system = run.system()
     lines = []
     for name, occupation in zip(run.gas.components, system.occupations, strict=True):
-        if occupation.closed:
-            lines.append(f"{name}: closed shell, one determinant of {occupation.population}")
-            continue
-        near = " and ".join(map(str, nearest_closed(system.axes, occupation.population)))
-        lines.append(
-            f"{name}: open shell, {occupation.valence} of {occupation.degeneracy} orbitals of the "
-            f"last level filled; snapshots are an equal mixture of all fillings. Nearest closed "
-            f"shells: {near}"
-        )
+        if not occupation.closed:
+            near = " and ".join(map(str, nearest_closed(system.axes, occupation.population)))
+            lines.append(
+                f"{name}: open shell, {occupation.valence} of {occupation.degeneracy} orbitals of "
+                f"the last level filled; snapshots are an equal mixture of all fillings. Nearest "
+                f"closed shells: {near}"
+            )
     return lines
 
 

@@ -2,11 +2,16 @@
 
 from __future__ import annotations
 
+import os
 import signal
+import sys
 from pathlib import Path
 from types import FrameType
 
 import click
+
+# How much is said on standard error.
+QUIET, NORMAL, VERBOSE = 0, 1, 2
 
 
 @click.command()
@@ -24,40 +29,70 @@ import click
     help="Batches drawn side by side; default: the cores this process may use. "
     "The numbers are the same for any N.",
 )
-def sample(run_file: str, target: str | None, workers: int | None) -> int:
+@click.option(
+    "--more",
+    metavar="SNAPSHOTS",
+    type=click.IntRange(min=1),
+    default=None,
+    help="Add so many snapshots to a finished result, rounded up to whole batches.",
+)
+@click.option("--quiet", is_flag=True, help="No progress and no remarks; only refusals and errors.")
+@click.option("--verbose", is_flag=True, help="Also versions, the run digest and every batch.")
+def sample(
+    run_file: str,
+    target: str | None,
+    workers: int | None,
+    more: int | None,
+    quiet: bool,
+    verbose: bool,
+) -> int:
     """Draw a run: snapshots, tallies, and the exact expectation beside them, in one netCDF file.
 
     A run that was interrupted goes on with the same command; finished batches are kept in
-    FILE.nc.parts until the result is complete.
+    FILE.nc.parts until the result is complete. More batches in the run file, or --more, extend a
+    finished result without drawing anything again.
     """
-    from pairmc.cli.check import shell_messages
+    from pairmc.cli.check import open_shell_messages
     from pairmc.cli.describe import summary_text
     from pairmc.cli.main import INTERRUPTED, TERMINATED, TerminatedError
     from pairmc.cli.progress import ProgressDisplay
     from pairmc.runfile.read import read_run_file
 
+    if quiet and verbose:
+        raise click.UsageError("--quiet and --verbose exclude one another")
     run = read_run_file(run_file)
-    for message in shell_messages(run):
-        if "open shell" in message:
-            click.echo(message, err=True)
 
-    from pairmc.results.sample import available_cores, default_result_path, sample_into
+    from pairmc.results.load import load
+    from pairmc.results.sample import default_result_path, sample_into
     from pairmc.results.summary import summarise
+    from pairmc.running.resources import available_cores
 
     path = Path(target) if target else default_result_path(run)
-    count = workers or available_cores()
+    level = QUIET if quiet else VERBOSE if verbose else NORMAL
     signal.signal(signal.SIGTERM, _terminate)
     try:
-        with ProgressDisplay() as display:
-            dataset = sample_into(run, path, count, display.report, display.say)
+        with ProgressDisplay(run, level) as display:
+            for message in open_shell_messages(run):
+                display.say(message)
+            sample_into(
+                run,
+                path,
+                workers or available_cores(),
+                more or 0,
+                report=display.report,
+                warn=display.say,
+            )
     except (KeyboardInterrupt, TerminatedError) as ended:
+        again = " ".join(["pairmc", "sample", *sys.argv[2:]]) if sys.argv[1:2] == ["sample"] else ""
         click.echo(
-            f"\nstopped; finished batches are kept. To go on: pairmc sample {run_file}"
-            + (f" --into {target}" if target else ""),
+            f"\nstopped; finished batches are kept in {path}.parts. "
+            f"To go on: {again or f'pairmc sample {run_file}'}",
             err=True,
         )
-        return TERMINATED if isinstance(ended, TerminatedError) else INTERRUPTED
-    click.echo(summary_text({"file": str(path)} | summarise(dataset)))
+        sys.stderr.flush()
+        # at once: threads are still drawing, and nothing they have is lost that was finished
+        os._exit(TERMINATED if isinstance(ended, TerminatedError) else INTERRUPTED)
+    click.echo(summary_text({"file": str(path)} | summarise(load(path, snapshots=False))))
     return 0
 
 

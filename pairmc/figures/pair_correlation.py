@@ -6,6 +6,7 @@ bins and drawn as steps, so that a point is to be held against the step it stand
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from dataclasses import dataclass
 from typing import Any
 
@@ -14,22 +15,42 @@ import xarray as xr
 from matplotlib.axes import Axes
 from matplotlib.container import ErrorbarContainer
 from matplotlib.figure import SubFigure
+from matplotlib.legend_handler import HandlerTuple
 from matplotlib.patches import Patch
-from matplotlib.ticker import FuncFormatter, MaxNLocator
-from numpy.typing import NDArray
+from numpy.typing import ArrayLike, NDArray
 
+from pairmc.errors import InputError, Problem
 from pairmc.figures import style
 from pairmc.results.audit import INTERVAL_LEVEL
 from pairmc.statistics import t_quantile
 
-# Pairs beside one another.
-MOST_COLUMNS = 3
+# Pairs in one picture.
+MOST_PAIRS = 21
+
+# Millimetres: heading and legend; one row of pairs.
+_FRAME_HEIGHT, _ROW_HEIGHT = 22.0, 78.0
+
+# Height of the values' panel where that of the differences is 1.
+_RATIO = 2.0
+
+# Points; smaller where there are more bins than this.
+_MARKER_SIZE = 2.2
+_CROWDED = 100
+
+# Characters of a pair's name on one line.
+_LONGEST_LABEL = 22
 
 # Room above the highest point and below the lowest, as a part of what is shown.
 _MARGIN = 0.08
 
+# Points above so many times the highest curve do not set the scale.
+_HIGHEST = 2.0
+
 # The lower panel shows at least so many standard errors.
 _LEAST_DIFFERENCE = 3.6
+
+# The curve of the infinite system.
+_INFINITE: dict[str, Any] = {"color": style.LIGHT, "linestyle": (0, (2.2, 0.7))}
 
 # Below these global p-values the words change.
 _DOUBTFUL, _EXCLUDED = 1e-2, 1e-4
@@ -39,7 +60,7 @@ def size(dataset: xr.Dataset) -> tuple[float, float]:
     """Return width and height of the panel in millimetres."""
     rows, columns = _shape(dataset)
     width = style.COLUMN if columns == 1 else style.PAGE
-    return width, 24.0 + (60.0 if columns == 1 else 52.0) * rows
+    return width, _FRAME_HEIGHT + _ROW_HEIGHT * rows
 
 
 def draw(dataset: xr.Dataset, panel: SubFigure, heading: str) -> None:
@@ -55,10 +76,10 @@ def draw(dataset: xr.Dataset, panel: SubFigure, heading: str) -> None:
         What the result is called.
     """
     rows, columns = _shape(dataset)
-    width = size(dataset)[0] - 6.0
+    width = style.width_of(panel) - 6.0
     panel.suptitle(style.literal(style.wrap(heading, width, style.TITLE_SIZE)))
     axes = panel.subplots(
-        2 * rows, columns, squeeze=False, height_ratios=[2.2, 1.0] * rows, sharex=True
+        2 * rows, columns, squeeze=False, height_ratios=[_RATIO, 1.0] * rows, sharex=True
     )
     scales = _scales(dataset)
     limits = _limits(dataset)
@@ -76,21 +97,22 @@ def draw(dataset: xr.Dataset, panel: SubFigure, heading: str) -> None:
         _label_separation(upper, lower, scales)
         _label_values(dataset, index, upper, scales, first, last)
         if first:
-            lower.set_ylabel("difference\n(standard errors)")
+            lower.set_ylabel("difference /\nstandard error")
         else:
             lower.tick_params(labelleft=False)
     panel.align_ylabels(axes[:, 0])
-    handles = _legend_handles(dataset, axes[0, 0])
-    panel.legend(
-        handles=list(handles.values()),
-        labels=list(handles),
+    handles, names = _legend_entries(dataset, axes)
+    legend = panel.legend(
+        handles,
+        names,
         loc="outside lower center",
-        ncols=2 if columns == 1 else 3,
+        ncols=2 if width < style.COLUMN else 4 if len(names) <= 4 else 3,
         title=style.wrap(in_words(dataset), width, style.FONT_SIZE),
-        alignment="center",
         columnspacing=1.2,
         handlelength=2.2,
+        handler_map={tuple: HandlerTuple(ndivide=None)},
     )
+    legend.get_title().set_multialignment("center")
 
 
 def in_words(dataset: xr.Dataset) -> str:
@@ -149,21 +171,38 @@ def _scales(dataset: xr.Dataset) -> _Scales:
 
 
 def _shape(dataset: xr.Dataset) -> tuple[int, int]:
-    """Return rows and columns of pairs."""
+    """Return rows and columns of pairs.
+
+    Raises
+    ------
+    InputError
+        Where there are too many for one picture.
+    """
     pairs = dataset.sizes["pair"]
-    columns = min(pairs, MOST_COLUMNS)
+    if not 1 <= pairs <= MOST_PAIRS:
+        raise InputError(
+            Problem(
+                "pairs of components to draw",
+                str(pairs),
+                f"1 to {MOST_PAIRS} in one picture",
+                'choose some in Python: pairmc.plot(result.sel(pair=["…", "…"]))',
+            )
+        )
+    columns = min(pairs, 3 if pairs <= 6 else 4)
     return -(-pairs // columns), columns
 
 
 def _limits(dataset: xr.Dataset) -> tuple[float, float]:
-    """Return the range of g: all points, all curves, and the lower ends of all intervals.
+    """Return the range of g: all curves, the lower ends of all intervals, and the points.
 
-    The upper ends are left out: where next to nothing was expected and nothing was counted, they
-    are beyond any scale, and their bars leave the panel.
+    Where next to nothing was expected, one chance pair is a point far above all others and the
+    interval of no pair ends beyond any scale: such bars leave the panel, and points above
+    `_HIGHEST` times the highest curve are marked at its edge.
     """
-    shown = [dataset[f"pair_correlation{part}"].values for part in ("", "_expected", "_bulk")]
+    curves = max(float(dataset[f"pair_correlation_{part}"].max()) for part in ("expected", "bulk"))
+    points = dataset["pair_correlation"].values
     low = min(0.0, float(dataset["pair_correlation_interval"].min()))
-    high = float(np.max(shown))
+    high = max(curves, float(points[points <= _HIGHEST * curves].max(initial=0.0)))
     room = _MARGIN * (high - low)
     return low - room, high + 1.5 * room
 
@@ -181,11 +220,22 @@ def _is_like(label: str) -> bool:
     return first == second
 
 
-def _marker(label: str) -> dict[str, Any]:
+def _title(label: str) -> str:
+    """Return the name of a pair, long ones on two lines."""
+    return label if len(label) <= _LONGEST_LABEL else label.replace("-", "-\n")
+
+
+def _marker(dataset: xr.Dataset, index: int) -> dict[str, Any]:
     """Return the marker of a pair: full circles for like components, open squares for unlike."""
-    if _is_like(label):
-        return {"marker": "o", "color": style.LIKE, "markersize": 2.2}
-    return {"marker": "s", "color": style.UNLIKE, "markersize": 2.2, "markerfacecolor": "white"}
+    size = _MARKER_SIZE * min(1.0, (_CROWDED / dataset.sizes["separation"]) ** 0.5)
+    if _is_like(str(dataset["pair"].values[index])):
+        return {"marker": "o", "color": style.LIKE, "markersize": size}
+    return {
+        "marker": "s",
+        "color": style.UNLIKE,
+        "markersize": size,
+        "markerfacecolor": "white",
+    }
 
 
 def _edges(dataset: xr.Dataset) -> NDArray[np.float64]:
@@ -201,23 +251,34 @@ def _draw_values(
     part = dataset.isel(pair=index)
     separation, sampled = part["separation"].values, part["pair_correlation"].values
     interval = part["pair_correlation_interval"].values
-    axes.plot(
-        separation,
+    above = separation[sampled > limits[1]]
+    if len(above) > 0:
+        axes.plot(
+            above,
+            np.full(len(above), 1.0),
+            transform=axes.get_xaxis_transform(),
+            **_marker(dataset, index) | {"marker": "^", "markersize": 4.5, "linestyle": "none"},
+            clip_on=False,
+            label="above",
+            zorder=5,
+        )
+    axes.stairs(
         part["pair_correlation_bulk"].values,
-        color=style.LIGHT,
-        linestyle=(0, (2.2, 0.7)),
-        linewidth=2.6,
+        _edges(dataset),
+        baseline=None,
         label="infinite",
+        linewidth=2.6,
         zorder=1,
+        **_INFINITE,
     )
     axes.stairs(
         part["pair_correlation_expected"].values,
         _edges(dataset),
         baseline=None,
         color=style.DARK,
-        linewidth=0.7,
+        linewidth=0.6,
         label="exact",
-        zorder=2,
+        zorder=4,
     )
     axes.set_xlim(0.0, float(_edges(dataset)[-1]))
     axes.set_ylim(*limits)
@@ -230,7 +291,7 @@ def _draw_values(
         markeredgewidth=0.5,
         label="sampled",
         zorder=3,
-        **_marker(str(part["pair"].values)),
+        **_marker(dataset, index),
     )
 
 
@@ -240,14 +301,15 @@ def _draw_differences(dataset: xr.Dataset, index: int, axes: Axes, reach: float)
     axes.axhspan(-band, band, color=style.BAND, linewidth=0.0, zorder=0)
     axes.axhline(0.0, color=style.DARK, linewidth=0.5, zorder=1)
     axes.set_ylim(-reach, reach)
-    axes.yaxis.set_major_locator(MaxNLocator(4, integer=True, symmetric=True))
-    start, stop, difference = merged_differences(dataset, index)
+    style.number_ticks(axes.yaxis, 4, whole=True)
+    start, stop, difference, infinite = merged_differences(dataset, index)
     if len(difference) == 0:
-        axes.text(
-            0.5, 0.5, "too few pairs", transform=axes.transAxes, ha="center", va="center", zorder=2
-        )
+        axes.text(0.5, 0.72, "too few pairs", transform=axes.transAxes, ha="center", va="center")
         return
-    marker = _marker(str(dataset["pair"].values[index]))
+    axes.stairs(
+        infinite, np.append(start, stop[-1]), baseline=None, linewidth=1.3, zorder=2, **_INFINITE
+    )
+    marker = _marker(dataset, index) | {"markersize": _MARKER_SIZE}
     finite = np.isfinite(difference)
     axes.errorbar(
         (0.5 * (start + stop))[finite],
@@ -270,28 +332,43 @@ def _draw_differences(dataset: xr.Dataset, index: int, axes: Axes, reach: float)
 
 def merged_differences(
     dataset: xr.Dataset, index: int
-) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]:
-    """Return lower edge, upper edge and standardised difference of each merged bin of a pair."""
+) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]:
+    """Return what is known of the merged bins of one pair.
+
+    Returns
+    -------
+    start, stop : array (merged,)
+        Edges, in length units.
+    difference : array (merged,)
+        Sampled less exact, in standard errors.
+    infinite : array (merged,)
+        Infinite system less exact, in the same standard errors; each g of a bin counts with the
+        volume of its shell.
+    """
     part, edges = dataset.isel(pair=index), _edges(dataset)
     merge = part["pair_correlation_merge"].values
     numbers, first, sizes = np.unique(merge, return_index=True, return_counts=True)
     tested = numbers >= 0
-    first, after = first[tested], (first + sizes)[tested]
-    return edges[first], edges[after], part["pair_correlation_difference"].values[first]
+    numbers, first, after = numbers[tested], first[tested], (first + sizes)[tested]
+    shell = np.diff(edges ** dataset.sizes["axis"])
+    bulk = shell * part["pair_correlation_bulk"].values
+    average = [bulk[a:b].sum() / shell[a:b].sum() for a, b in zip(first, after, strict=True)]
+    merged = dataset.isel(pair_correlation_merged_bin=numbers)
+    exact = merged["pair_correlation_merged_expected"].values
+    error = merged["pair_correlation_merged_error"].values
+    infinite = (np.array(average) - exact) / np.where(error > 0.0, error, np.nan)
+    return edges[first], edges[after], part["pair_correlation_difference"].values[first], infinite
 
 
 def _label_separation(upper: Axes, lower: Axes, scales: _Scales) -> None:
     """Name both scales of the separation: with its unit below, times k_F above."""
     unit = style.unit_in_words(scales.unit, 1, scales.length_exponent)
     lower.set_xlabel(f"separation $r$ ({unit})")
-    lower.xaxis.set_major_locator(MaxNLocator(5))
-    lower.xaxis.set_major_formatter(_in_powers(scales.length_exponent))
+    style.number_ticks(lower.xaxis, 5, scales.length_exponent)
     upper.tick_params(labelbottom=False)
     lower.tick_params(labelbottom=True)
-    top = upper.secondary_xaxis(
-        "top", functions=(lambda r: r * scales.wavenumber, lambda z: z / scales.wavenumber)
-    )
-    top.xaxis.set_major_locator(MaxNLocator(6))
+    top = upper.secondary_xaxis("top", functions=_linear(scales.wavenumber, 0.0))
+    style.number_ticks(top.xaxis, 6)
     of = f" of {scales.majority}" if scales.majority else ""
     top.set_xlabel(rf"$k_\mathrm{{F}} r$  ($k_\mathrm{{F}}${of})" if of else r"$k_\mathrm{F} r$")
 
@@ -303,34 +380,50 @@ def _label_values(
     label = str(dataset["pair"].values[index])
     second = list(dataset["spin"].values).index(label.split("-")[1])
     density = float(dataset["density"][second])
-    axes.set_title(label)
+    axes.set_title(_title(label))
+    style.number_ticks(axes.yaxis, 6)
     if first:
         axes.set_ylabel("pair correlation $g$")
     else:
         axes.tick_params(labelleft=False)
-    right = axes.secondary_yaxis(
-        "right", functions=(lambda g: density * (g - 1.0), lambda hole: hole / density + 1.0)
-    )
-    right.yaxis.set_major_locator(MaxNLocator(5))
-    right.yaxis.set_major_formatter(_in_powers(scales.density_exponent))
+    right = axes.secondary_yaxis("right", functions=_linear(density, 1.0))
+    style.number_ticks(right.yaxis, 6, scales.density_exponent)
     if last:
         unit = style.unit_in_words(scales.unit, -scales.dimension, scales.density_exponent)
         right.set_ylabel(f"exchange hole ({unit})")
 
 
-def _in_powers(exponent: int) -> FuncFormatter:
-    """Return a format of ticks that takes out a power of ten."""
-    return FuncFormatter(lambda value, _: f"{value / 10.0**exponent:g}".replace("-", "−"))
+def _linear(
+    slope: float, zero: float
+) -> tuple[Callable[[ArrayLike], ArrayLike], Callable[[ArrayLike], ArrayLike]]:
+    """Return the function slope·(x − zero) and its inverse."""
+
+    def forward(x: ArrayLike) -> ArrayLike:
+        return slope * (np.asarray(x) - zero)
+
+    def back(y: ArrayLike) -> ArrayLike:
+        return np.asarray(y) / slope + zero
+
+    return forward, back
 
 
-def _legend_handles(dataset: xr.Dataset, axes: Axes) -> dict[str, Any]:
-    """Return what is explained in the legend."""
-    drawn, labels = axes.get_legend_handles_labels()
-    by_label = dict(zip(labels, drawn, strict=True))
+def _legend_entries(dataset: xr.Dataset, axes: NDArray[Any]) -> tuple[list[Any], list[str]]:
+    """Return what is drawn, one of each kind, and what it is called."""
+    drawn: dict[str, dict[str, Any]] = {}
+    for index, label in enumerate(dataset["pair"].values):
+        row, column = divmod(index, axes.shape[1])
+        handles, names = axes[2 * row, column].get_legend_handles_labels()
+        kind = "like" if _is_like(str(label)) else "unlike"
+        drawn.setdefault(kind, {}).update(zip(names, handles, strict=True))
+    one = next(iter(drawn.values()))
+    above = [kind["above"] for kind in drawn.values() if "above" in kind]
     interval = dataset["pair_correlation_interval"].attrs["long_name"].rsplit(", ", 1)[-1]
-    return {
-        f"sampled, {interval}": by_label["sampled"],
-        "exact, this finite system": by_label["exact"],
-        "infinite system": by_label["infinite"],
-        f"{100 * INTERVAL_LEVEL:g} % of differences": Patch(color=style.BAND, linewidth=0.0),
+    entries = {
+        f"sampled, {interval}": tuple(kind["sampled"] for kind in drawn.values()),
+        "exact, this finite system": one["exact"],
+        "infinite system": one["infinite"],
+        f"{100 * INTERVAL_LEVEL:g} % band of differences": Patch(color=style.BAND, linewidth=0.0),
     }
+    if above:
+        entries["above the panel"] = tuple(above)
+    return list(entries.values()), list(entries)

@@ -10,9 +10,13 @@ import textwrap
 from collections.abc import Iterator
 from contextlib import contextmanager
 from math import floor, log10
-from typing import Any
+from typing import TYPE_CHECKING, Any
 
 from pairmc.errors import InputError, Problem
+
+if TYPE_CHECKING:
+    from matplotlib.axis import Axis
+    from matplotlib.figure import SubFigure
 
 # Width of one column and of both columns of a journal page, millimetres.
 COLUMN = 85.0
@@ -26,10 +30,10 @@ TITLE_SIZE = 8.0
 DARK = "#000000"
 LIKE = "#0a5a9c"
 UNLIKE = "#c4690a"
-LIGHT = "#b8b8b8"
-BAND = "#e6e6e6"
+LIGHT = "#a6a6a6"
+BAND = "#ececec"
 
-SETTINGS: dict[str, Any] = {
+SETTINGS: Any = {
     "font.family": ["DejaVu Sans"],
     "font.size": FONT_SIZE,
     "axes.labelsize": FONT_SIZE,
@@ -89,6 +93,11 @@ def inches(width: float, height: float) -> tuple[float, float]:
     return width / MILLIMETRES_PER_INCH, height / MILLIMETRES_PER_INCH
 
 
+def width_of(panel: SubFigure) -> float:
+    """Return the width of a panel in millimetres."""
+    return float(panel.bbox.width) / panel.get_figure(root=True).dpi * MILLIMETRES_PER_INCH
+
+
 def power_of(base: str, power: int) -> str:
     """Return ``base`` to a power, in print: ``µm⁻²``, ``10¹²``."""
     return base if power == 1 else base + str(power).translate(_SUPERSCRIPTS)
@@ -118,6 +127,33 @@ def exponent_for(largest: float) -> int:
     """Return the power of ten to set beside the unit, 0 where the numbers are short without."""
     exponent = floor(log10(largest))
     return 0 if -2 <= exponent <= 2 else exponent
+
+
+def number_ticks(axis: Axis, most: int, exponent: int = 0, whole: bool = False) -> None:
+    """Set round numbers with equal decimals at the ticks of an axis.
+
+    Parameters
+    ----------
+    axis
+        ``axes.xaxis`` or ``axes.yaxis``.
+    most
+        Intervals between ticks, at most.
+    exponent
+        Power of ten to take out of the numbers.
+    whole
+        Whole numbers only.
+    """
+    from matplotlib.ticker import FuncFormatter, MaxNLocator
+
+    scale = 10.0**exponent
+
+    def text(value: float, _: int | None) -> str:
+        short = [f"{tick / scale:.6g}" for tick in axis.get_majorticklocs()]
+        decimals = max((len(number.partition(".")[2]) for number in short), default=0)
+        return f"{round(value / scale, decimals) + 0.0:.{decimals}f}".replace("-", "−")
+
+    axis.set_major_locator(MaxNLocator(most, steps=[1, 2, 2.5, 5, 10], integer=whole))
+    axis.set_major_formatter(FuncFormatter(text))
 
 
 def text_width(text: str, size: float) -> float:

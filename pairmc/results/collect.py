@@ -2,14 +2,16 @@
 
 from __future__ import annotations
 
+import json
 from collections.abc import Sequence
 from dataclasses import dataclass, field
 from typing import Any
 
 import numpy as np
+import xarray as xr
 from numpy.typing import NDArray
 
-from pairmc.running.parts import Parts
+from pairmc.physics.observables import registry
 from pairmc.statistics import Moments
 
 
@@ -40,10 +42,21 @@ class Tallies:
 
 @dataclass(eq=False)
 class Collected:
-    """All tallies of a run's batches, in batch order, and what made them."""
+    """All tallies of a run's batches, in batch order, and what made them.
+
+    Parameters
+    ----------
+    tallies
+        Of each observable.
+    made
+        Versions and processors that drew them, each set once.
+    history
+        Of the earlier result, or empty.
+    """
 
     tallies: dict[str, Tallies] = field(default_factory=dict)
     made: list[dict[str, str]] = field(default_factory=list)
+    history: str = ""
 
     def add_part(self, names: Sequence[str], arrays: dict[str, Any], made: dict[str, str]) -> None:
         """Add the next batch.
@@ -62,29 +75,28 @@ class Collected:
             mine.counts.append(arrays[f"{name}.count"])
             mine.moment_sum = mine.moment_sum + arrays[f"{name}.moment_sum"]
             mine.moment_product = mine.moment_product + arrays[f"{name}.moment_product"]
+        self._note(made)
+
+    def add_result(self, names: Sequence[str], result: xr.Dataset) -> None:
+        """Add all batches of an earlier result of the same run.
+
+        Parameters
+        ----------
+        names
+            Observables wanted.
+        result
+            The earlier result.
+        """
+        self.history = result.attrs["history"]
+        for name in names:
+            mine = self.tallies.setdefault(name, Tallies())
+            mine.counts.extend(result[registry.observable(name).COUNT_NAME].values)
+            mine.moment_sum = mine.moment_sum + result[f"{name}_moment_sum"].values
+            mine.moment_product = mine.moment_product + result[f"{name}_moment_product"].values
+        for made in json.loads(result.attrs["made_with"]):
+            self._note(made)
+
+    def _note(self, made: dict[str, str]) -> None:
+        """Remember what made a batch, once."""
         if made not in self.made:
             self.made.append(made)
-
-
-def collect(parts: Parts, batches: Sequence[int], names: Sequence[str]) -> Collected:
-    """Gather the tallies of finished batches.
-
-    Parameters
-    ----------
-    parts
-        Where they are.
-    batches
-        Their numbers, in order.
-    names
-        Observables wanted.
-
-    Raises
-    ------
-    pairmc.running.parts.DamagedPartError
-        Where a part is not what was written.
-    """
-    collected = Collected()
-    for batch in batches:
-        arrays, made = parts.read(batch)
-        collected.add_part(names, arrays, made)
-    return collected

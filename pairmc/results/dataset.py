@@ -58,24 +58,25 @@ def build_dataset(run: RunFile, collected: Collected) -> xr.Dataset:
         more, where = _observable(run, name, collected)
         variables |= more
         coordinates |= where
-    return xr.Dataset(variables, coords=coordinates, attrs=attributes(run, collected.made))
+    return xr.Dataset(variables, coords=coordinates, attrs=attributes(run, collected))
 
 
-def attributes(run: RunFile, made: list[dict[str, str]]) -> dict[str, Any]:
+def attributes(run: RunFile, collected: Collected) -> dict[str, Any]:
     """Return the global attributes of a result: what it is, and what made it."""
     stamp = datetime.now(UTC).strftime("%Y-%m-%dT%H:%M:%SZ")
     program = f"pairmc {version('pairmc')}"
+    line = f"{stamp} {program}: {run.snapshots} snapshots in {run.batches} batches"
     return {
         "Conventions": schema.CONVENTIONS,
         schema.SCHEMA_ATTRIBUTE: schema.schema_text(),
         "title": run.title,
         "source": f"{program}: direct draws of a free Fermi gas",
-        "history": f"{stamp} {program}: {run.snapshots} snapshots in {run.batches} batches",
+        "history": f"{collected.history}\n{line}" if collected.history else line,
         "run_file": run.text,
         "run_digest": digest(run),
         "run_settings": json.dumps(canonical(run), sort_keys=True),
         "seed": str(run.seed),
-        "made_with": json.dumps(made, sort_keys=True),
+        "made_with": json.dumps(collected.made, sort_keys=True),
         "normalisation": schema.NORMALISATION,
         "ensemble": schema.ENSEMBLES["canonical"],
     }

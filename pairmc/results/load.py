@@ -15,13 +15,15 @@ from pairmc.errors import Problem, ResultFileError
 from pairmc.results import schema
 
 
-def load(path: str | os.PathLike[str]) -> xr.Dataset:
+def load(path: str | os.PathLike[str], snapshots: bool = True) -> xr.Dataset:
     """Read a result file into memory and close it.
 
     Parameters
     ----------
     path
         The file.
+    snapshots
+        False leaves out the positions and components of kept snapshots.
 
     Returns
     -------
@@ -35,7 +37,8 @@ def load(path: str | os.PathLike[str]) -> xr.Dataset:
     """
     read_attributes(path)
     try:
-        dataset = xr.load_dataset(path, engine="netcdf4")
+        left_out = [] if snapshots else ["position", "component"]
+        dataset = xr.load_dataset(path, engine="netcdf4", drop_variables=left_out)
     except (OSError, RuntimeError, ValueError, AttributeError) as error:
         raise _refusal(path, "a damaged file", f"({error})") from error
     for name in dataset.coords:
@@ -64,6 +67,12 @@ def read_attributes(path: str | os.PathLike[str]) -> dict[str, Any]:
         ) from error
     _check_schema(path, attributes)
     return attributes
+
+
+def batches_in(path: str | os.PathLike[str]) -> int:
+    """Return how many batches a result file holds."""
+    with netCDF4.Dataset(path) as file:
+        return len(file.dimensions["batch"])
 
 
 def run_settings(attributes: dict[str, Any]) -> dict[str, Any]:

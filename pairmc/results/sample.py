@@ -12,22 +12,21 @@ from functools import partial
 from pathlib import Path
 from typing import NamedTuple
 
-import numpy as np
 import xarray as xr
 
-from pairmc.errors import InputError, PairmcError, Problem
+from pairmc.errors import InputError, Problem
 from pairmc.files import remove_unfinished
-from pairmc.results.collect import collect
-from pairmc.results.dataset import build_dataset
-from pairmc.results.load import load, read_attributes, run_settings
-from pairmc.results.write import kept_blocks, write_result
-from pairmc.runfile.digest import canonical, differing_keys, digest
+from pairmc.results.fold import fold
+from pairmc.results.load import load
+from pairmc.results.standing import check_target, stored_batches, usable_parts
 from pairmc.runfile.read import read_run_file
 from pairmc.runfile.run import RunFile
 from pairmc.running.batch import run_batch
 from pairmc.running.campaign import missing_batches, run_batches
-from pairmc.running.parts import DamagedPartError, Parts
-from pairmc.running.provenance import made_with
+from pairmc.running.lock import OutputLock
+from pairmc.running.parts import Parts
+from pairmc.running.provenance import head_of
+from pairmc.running.resources import available_cores, refuse_unless_it_fits
 
 
 class Progress(NamedTuple):
@@ -46,6 +45,10 @@ class Progress(NamedTuple):
     drawn: int
 
 
+Report = Callable[[Progress], None]
+Warn = Callable[[str], None]
+
+
 def default_result_path(run: RunFile) -> Path:
     """Return the run file's stem with .nc, beside it."""
     return Path(run.path).with_suffix(".nc")
@@ -55,6 +58,7 @@ def sample(
     run: RunFile | str | os.PathLike[str],
     into: str | os.PathLike[str] | None = None,
     workers: int | None = None,
+    more: int = 0,
 ) -> xr.Dataset:
     """Sample a run and return its result.
 
@@ -67,6 +71,8 @@ def sample(
     workers
         Batches drawn side by side; None takes the cores that this process may use. The numbers are
         the same for any.
+    more
+        Snapshots to add to those in the file, rounded up to whole batches.
 
     Returns
     -------
@@ -76,19 +82,20 @@ def sample(
     Raises
     ------
     InputError
-        Where the run file or the output is refused.
+        Where the run file, the output or an argument is refused.
     """
     known = run if isinstance(run, RunFile) else read_run_file(run)
+    for name, number, least in (("workers", workers, 1), ("more", more, 0)):
+        if number is not None and (not isinstance(number, int) or number < least):
+            raise InputError(Problem(name, repr(number), f"a whole number, at least {least}"))
     count = workers or available_cores()
     if into is not None:
-        return sample_into(known, Path(into), count, warn=_warn)
+        sample_into(known, Path(into), count, more, warn=_warn)
+        return load(into)
     with tempfile.TemporaryDirectory() as folder:
-        return sample_into(known, Path(folder) / "result.nc", count, warn=_warn)
-
-
-def available_cores() -> int:
-    """Return the number of cores this process may use."""
-    return len(os.sched_getaffinity(0)) if hasattr(os, "sched_getaffinity") else os.cpu_count() or 1
+        path = Path(folder) / "result.nc"
+        sample_into(known, path, count, more, warn=_warn)
+        return load(path)
 
 
 def _warn(message: str) -> None:
@@ -99,10 +106,11 @@ def sample_into(
     run: RunFile,
     path: Path,
     workers: int = 1,
-    report: Callable[[Progress], None] = lambda progress: None,
-    warn: Callable[[str], None] = lambda message: None,
-) -> xr.Dataset:
-    """Sample a run into a file; batches that an earlier, interrupted call finished are not redrawn.
+    more: int = 0,
+    report: Report = lambda progress: None,
+    warn: Warn = lambda message: None,
+) -> None:
+    """Sample a run into a file; finished batches, in the file or in its parts, are not redrawn.
 
     Parameters
     ----------
@@ -112,144 +120,79 @@ def sample_into(
         The result file.
     workers
         Batches drawn side by side, one thread each.
+    more
+        Snapshots to add to those in the file (or to the run's own, where there is no file yet),
+        rounded up to whole batches.
     report
         Told after every finished batch.
     warn
         Told what the user should know.
 
-    Returns
-    -------
-    xarray.Dataset
-        The result as read back.
-
     Raises
     ------
     InputError
-        Where the file or its parts belong to another run; nothing is touched.
+        Where the file or its parts belong to another run, another process is sampling into it, or
+        the machine has too little memory or disk space; nothing is touched.
     BatchError
         Where a batch failed; those finished are kept.
     OSError
         Where the disk refuses; those finished are kept.
     """
-    parts = Parts(path.with_name(path.name + ".parts"))
     check_target(path)
-    if path.exists() and _is_complete(run, path):
-        warn(f"{path} holds all {run.batches} batches already")
-        return load(path)
-    finished = _usable_parts(run, parts, warn)
-    remove_unfinished(path.parent, path.name)
-    parts.clean()
-    missing = missing_batches(run.batches, finished)
-    made = made_with(run)
-    progress = Progress(run.batches - len(missing), run.batches, 0)
-    report(progress)
+    stored = stored_batches(run, path)
+    wanted = run.with_batches(_batches_wanted(run, stored, more, warn))
+    refuse_unless_it_fits(wanted, path.parent, workers)
+    parts = Parts(path.with_name(path.name + ".parts"))
+    with OutputLock(path):
+        stored = stored_batches(run, path)
+        remove_unfinished(path.parent, path.name)
+        parts.clean()
+        if stored >= wanted.batches:
+            _say_complete(wanted, path, parts, warn)
+            return
+        finished = usable_parts(run, parts, warn)
+        missing = missing_batches(wanted.batches, [*range(stored), *finished])
+        _draw_missing(wanted, missing, parts, workers, report)
+        fold(wanted, path, parts, stored, warn)
+
+
+def _batches_wanted(run: RunFile, stored: int, more: int, warn: Warn) -> int:
+    """Return how many batches the file is to hold in the end."""
+    if not more:
+        return max(run.batches, stored)
+    added = -(-more // run.batch_size)
+    if added * run.batch_size != more:
+        warn(
+            f"{more} snapshots more are rounded up to {added * run.batch_size}: {added} batches of "
+            f"{run.batch_size}"
+        )
+    return (stored or run.batches) + added
+
+
+def _say_complete(run: RunFile, path: Path, parts: Parts, warn: Warn) -> None:
+    """Say that nothing is missing, and delete parts that the file holds already."""
+    warn(f"{path} holds all {run.batches} batches already")
+    parts.remove(run.batches)
+    further = len(parts.finished())
+    if further:
+        warn(f"{parts.folder} holds {further} finished batches beyond them; --more takes them up")
+
+
+def _draw_missing(
+    run: RunFile, missing: list[int], parts: Parts, workers: int, report: Report
+) -> None:
+    """Draw the missing batches and store each as it finishes."""
+    finished, head = run.batches - len(missing), head_of(run)
+    report(Progress(finished, run.batches, 0))
     stop = threading.Event()
     work = partial(run_batch, run, stop=stop.is_set)
-    with ThreadPoolExecutor(workers) as executor:
-        try:
-            for number, arrays in run_batches(missing, work, executor, 2 * workers):
-                parts.write(number, arrays, made)
-                progress = Progress(progress.finished + 1, run.batches, progress.drawn + 1)
-                report(progress)
-        finally:
-            stop.set()
-    return fold(run, path, parts, warn)
-
-
-def fold(run: RunFile, path: Path, parts: Parts, warn: Callable[[str], None]) -> xr.Dataset:
-    """Fold all parts of a run into its result file, read it back, and only then delete them.
-
-    Raises
-    ------
-    PairmcError
-        Where what was read back is not what was written; the parts are kept.
-    """
-    collected = collect(parts, range(run.batches), list(run.observables))
-    if len(collected.made) > 1:
-        warn("batches were drawn with different versions or processors: their last bits may differ")
-    dataset = build_dataset(run, collected)
-    write_result(path, dataset, run, kept_blocks(run, parts))
-    result = load(path)
-    for name in dataset.data_vars:
-        if not np.array_equal(dataset[name].values, result[name].values, equal_nan=True):
-            raise PairmcError(f"{path}: {name} was not read back as written; the parts are kept")
-    parts.remove()
-    return result
-
-
-def check_target(path: Path) -> None:
-    """Refuse an output that cannot be written, before anything is drawn.
-
-    Raises
-    ------
-    InputError
-        Where the folder is missing or not writable, or the name is a folder's.
-    """
-    folder = path.parent
-    if not folder.is_dir():
-        raise InputError(
-            Problem(str(path), f"folder {folder} does not exist", "", "make it, or name another")
-        )
-    if path.is_dir():
-        raise InputError(Problem(str(path), "a folder", "a file name", "add a file name to it"))
-    if not os.access(folder, os.W_OK):
-        raise InputError(
-            Problem(str(path), f"folder {folder} is not writable", "", "name another with --into")
-        )
-
-
-def _is_complete(run: RunFile, path: Path) -> bool:
-    """Return whether the file is this run's; refuse it where it is another's."""
-    attributes = read_attributes(path)
-    _refuse_other_run(run, path, run_settings(attributes))
-    with xr.open_dataset(path, engine="netcdf4") as file:
-        batches = file.sizes["batch"]
-    if batches != run.batches:
-        raise InputError(
-            Problem(
-                str(path),
-                f"a result of this run with {batches} batches, {run.batches} asked for",
-                "",
-                "name another file with --into",
-            )
-        )
-    return True
-
-
-def _usable_parts(run: RunFile, parts: Parts, warn: Callable[[str], None]) -> list[int]:
-    """Return the finished batches of this run; damaged ones are named, deleted and redrawn."""
-    usable = []
-    for batch in parts.finished():
-        try:
-            _, made = parts.read(batch)
-        except DamagedPartError as error:
-            warn(f"{parts.path(batch)} is damaged ({error}); the batch is drawn again")
-            parts.discard(batch)
-            continue
-        if made["digest"] != digest(run):
-            raise InputError(
-                Problem(
-                    str(parts.folder),
-                    "unfinished batches of another run",
-                    "",
-                    "finish that run, delete the folder, or name another file with --into",
-                )
-            )
-        usable.append(batch)
-    return usable
-
-
-def _refuse_other_run(run: RunFile, path: Path, settings: dict[str, object]) -> None:
-    """Refuse a result file of another run, naming the keys that differ."""
-    differing = differing_keys(settings, canonical(run))
-    if differing:
-        key, theirs, mine = differing[0]
-        more = f" (and {len(differing) - 1} more keys)" if len(differing) > 1 else ""
-        raise InputError(
-            Problem(
-                str(path),
-                f"the result of another run: {key} is {theirs} there and {mine} here{more}",
-                "",
-                "name another file with --into, or move that one away",
-            )
-        )
+    executor = ThreadPoolExecutor(workers)
+    try:
+        outcomes = run_batches(missing, work, executor, 2 * workers)
+        for drawn, (number, arrays) in enumerate(outcomes, start=1):
+            parts.write(number, arrays, head)
+            report(Progress(finished + drawn, run.batches, drawn))
+    finally:
+        # threads end by themselves, at the latest after the snapshots they are drawing
+        stop.set()
+        executor.shutdown(wait=False, cancel_futures=True)

@@ -23,16 +23,36 @@ Block = tuple[int, NDArray[np.float32], NDArray[np.int8]]
 _CHUNK_BYTES = 1_000_000
 
 
-def kept_blocks(run: RunFile, parts: Parts) -> Iterator[Block]:
-    """Yield the kept snapshots batch by batch: number, position in length units, component."""
+def kept_in_parts(run: RunFile, parts: Parts, batches: range) -> Iterator[Block]:
+    """Yield the kept snapshots of finished batches: number, position in length units, component."""
     sides = np.array(run.system().sides)
-    for batch in range(run.batches):
+    for batch in batches:
         if kept_in_batch(run, batch) == 0:
             return
         arrays, _ = parts.read(batch)
         position = (arrays["kept.position"].astype(np.float64) * sides).astype(np.float32)
         position[position >= sides.astype(np.float32)] = 0.0
         yield batch, position, arrays["kept.component"]
+
+
+def kept_in_file(path: Path, run: RunFile) -> Iterator[Block]:
+    """Yield the kept snapshots of a result file, batch by batch.
+
+    Positions come in the run's length unit, also where the file was written in another.
+    """
+    with netCDF4.Dataset(path) as file:
+        if "position" not in file.variables:
+            return
+        file.set_auto_mask(False)
+        same_unit = file["position"].units == run.gas.units.udunits(1)
+        factors = np.array(run.system().sides) / file["side"][:]
+        numbers = file["snapshot_batch"][:]
+        for batch in np.unique(numbers):
+            first, last = np.searchsorted(numbers, [batch, batch + 1])
+            position = file["position"][first:last]
+            if not same_unit:
+                position = (position * factors).astype(np.float32)
+            yield int(batch), position, file["component"][first:last]
 
 
 def write_result(path: Path, dataset: xr.Dataset, run: RunFile, blocks: Iterator[Block]) -> None:
@@ -47,7 +67,8 @@ def write_result(path: Path, dataset: xr.Dataset, run: RunFile, blocks: Iterator
     run
         The run.
     blocks
-        The kept snapshots, batch by batch; one batch is in memory at a time.
+        The kept snapshots, batch by batch; one batch is in memory at a time. They may come from
+        the file that is about to be replaced.
 
     Raises
     ------

@@ -86,6 +86,10 @@ class RunFile:
             raise InputError(Problem("seed", value_in_words(seed), allowed))
         return replace(self, seed=number)
 
+    def with_batches(self, batches: int) -> RunFile:
+        """Return the same run with another number of batches of the same size."""
+        return replace(self, batches=batches, snapshots=batches * self.batch_size)
+
     def understood(self) -> dict[str, str]:
         """Return each quantity as it was understood, in the run's units.
 

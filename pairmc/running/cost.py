@@ -17,6 +17,9 @@ _SECONDS_PER_PAIR = 5e-9
 # Compiling the kernels the first time; kept in a cache afterwards.
 FIRST_COMPILATION = 25.0
 
+# Coordinates drawn before they are tallied, see batch.py.
+_COORDINATES = 60_000
+
 # The interpreter, the libraries and the compiled kernels.
 _BASE_MEMORY = 250e6
 
@@ -30,13 +33,16 @@ class Cost:
     seconds
         On one core, without compilation.
     memory
-        Largest memory of the process, bytes.
+        Largest memory of the process with one worker, bytes.
+    memory_per_worker
+        What each further worker adds, bytes.
     file
         Size of the result file, bytes.
     """
 
     seconds: float
     memory: float
+    memory_per_worker: float
     file: float
 
 
@@ -61,8 +67,10 @@ def estimate(run: RunFile) -> Cost:
     pairs = len(run.gas.components) * (len(run.gas.components) + 1) // 2
     bins = sum(settings.bins for settings in run.observables.values())
     tallies = pairs * bins * (run.batches * 8.0 + 120.0)
+    worker = largest + 40.0 * _COORDINATES + 4.0 * per_snapshot * min(kept, run.batch_size)
     return Cost(
         seconds=seconds * run.snapshots,
-        memory=_BASE_MEMORY + largest + 4.0 * tallies + per_snapshot * min(kept, run.batch_size),
+        memory=_BASE_MEMORY + worker + 4.0 * tallies,
+        memory_per_worker=worker,
         file=60_000.0 + tallies + kept * per_snapshot,
     )

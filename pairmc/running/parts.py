@@ -44,7 +44,7 @@ class Parts:
             if path.stem.removeprefix("batch-").isdigit()
         )
 
-    def write(self, batch: int, arrays: Arrays, made: dict[str, str]) -> None:
+    def write(self, batch: int, arrays: Arrays, made: dict[str, Any]) -> None:
         """Store a finished batch: whole or not at all.
 
         Parameters
@@ -54,7 +54,7 @@ class Parts:
         arrays
             What the batch returned.
         made
-            What made it: run digest, versions, processor.
+            What made it: the run's settings, versions, processor.
         """
         self.folder.mkdir(exist_ok=True)
         head = {"batch": batch, "checksum": checksum(arrays), "made": made}
@@ -66,7 +66,7 @@ class Parts:
 
         write_whole(self.path(batch), save)
 
-    def read(self, batch: int) -> tuple[Arrays, dict[str, str]]:
+    def read(self, batch: int) -> tuple[Arrays, dict[str, Any]]:
         """Return a finished batch and what made it.
 
         Raises
@@ -82,7 +82,7 @@ class Parts:
                 arrays: Arrays = {name: stored[name] for name in stored.files}
             head: dict[str, Any] = json.loads(str(arrays.pop("head")))
             intact = head["batch"] == batch and head["checksum"] == checksum(arrays)
-            made: dict[str, str] = head["made"]
+            made: dict[str, Any] = head["made"]
         except Exception as error:  # a flipped bit can make the readers fail in any way
             raise DamagedPartError(f"{type(error).__name__}: {error}") from error
         if not intact:
@@ -98,12 +98,13 @@ class Parts:
         if self.folder.is_dir():
             remove_unfinished(self.folder)
 
-    def remove(self) -> None:
-        """Delete all parts, and the folder unless foreign files lie in it."""
+    def remove(self, batches: int) -> None:
+        """Delete the parts of batches below `batches`, and the folder if nothing else is in it."""
         if not self.folder.is_dir():
             return
         for batch in self.finished():
-            self.discard(batch)
+            if batch < batches:
+                self.discard(batch)
         self.clean()
         if not any(self.folder.iterdir()):
             shutil.rmtree(self.folder)

@@ -65,10 +65,10 @@ def test_a_part_under_another_number_is_damaged(parts: Parts) -> None:
 
 def test_removing_leaves_foreign_files(parts: Parts) -> None:
     (parts.folder / "note.txt").write_text("mine")
-    parts.remove()
+    parts.remove(9)
     assert [path.name for path in parts.folder.iterdir()] == ["note.txt"]
     (parts.folder / "note.txt").unlink()
-    parts.remove()
+    parts.remove(9)
     assert not parts.folder.exists()
 
 

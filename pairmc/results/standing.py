@@ -1,0 +1,90 @@
+"""What is already there where a run is to be sampled into: its own batches, or another run's."""
+
+from __future__ import annotations
+
+import os
+from collections.abc import Callable
+from pathlib import Path
+from typing import Any
+
+from pairmc.errors import InputError, Problem
+from pairmc.results.load import batches_in, read_attributes, run_settings
+from pairmc.runfile.digest import canonical, differing_keys
+from pairmc.runfile.run import RunFile
+from pairmc.running.parts import DamagedPartError, Parts
+
+
+def check_target(path: Path) -> None:
+    """Refuse an output that cannot be written, before anything is drawn.
+
+    Raises
+    ------
+    InputError
+        Where the folder is missing or not writable, or the name is a folder's.
+    """
+    folder = path.parent
+    if path.is_dir():
+        raise _refusal(path, "a folder", "a file name", "add a file name to it")
+    if not folder.is_dir():
+        raise _refusal(path, f"folder {folder} does not exist", "", "make it, or name another")
+    if not os.access(folder, os.W_OK | os.X_OK):
+        raise _refusal(
+            path, f"folder {folder} is not writable", "", "name another place with --into"
+        )
+
+
+def stored_batches(run: RunFile, path: Path) -> int:
+    """Return how many batches of this run a result file holds; 0 where there is none.
+
+    Raises
+    ------
+    InputError
+        Where the file is another run's, naming the key that differs; or cannot be read.
+    """
+    if not path.exists():
+        return 0
+    settings = run_settings(read_attributes(path))
+    _refuse_other_run(run, str(path), "the result of another run", settings)
+    return batches_in(path)
+
+
+def usable_parts(run: RunFile, parts: Parts, warn: Callable[[str], None]) -> list[int]:
+    """Return the finished batches of this run; damaged ones are named, deleted and drawn again.
+
+    Raises
+    ------
+    InputError
+        Where they are another run's, naming the key that differs.
+    """
+    usable = []
+    for batch in parts.finished():
+        try:
+            _, made = parts.read(batch)
+        except DamagedPartError as error:
+            warn(f"{parts.path(batch)} is damaged ({error}); the batch is drawn again")
+            parts.discard(batch)
+            continue
+        words = "unfinished batches of another run"
+        _refuse_other_run(run, str(parts.folder), words, made["settings"])
+        usable.append(batch)
+    return usable
+
+
+def _refuse_other_run(run: RunFile, place: str, words: str, settings: dict[str, Any]) -> None:
+    differing = differing_keys(settings, canonical(run))
+    if not differing:
+        return
+    key, theirs, mine = differing[0]
+    more = f" (and {len(differing) - 1} more keys differ)" if len(differing) > 1 else ""
+    raise InputError(
+        Problem(
+            place,
+            f"{words}: {key} is {theirs} there and {mine} here{more}",
+            "",
+            "name another file with --into, or move that one away",
+        )
+    )
+
+
+def _refusal(path: Path, got: str, allowed: str, advice: str) -> InputError:
+    return InputError(Problem(str(path), got, allowed, advice))
