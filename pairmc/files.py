@@ -6,8 +6,29 @@ import os
 from collections.abc import Callable
 from pathlib import Path
 
+from pairmc.errors import InputError, Problem
+
 # Marks a file that is being written; what is left of one after a crash may be deleted.
 TEMPORARY = ".unfinished-"
+
+
+def refuse_unless_writable(path: Path) -> None:
+    """Refuse a name under which no file can be written.
+
+    Raises
+    ------
+    InputError
+        Where it is a folder's, or its folder is missing or not writable.
+    """
+    folder = path.parent
+    if path.is_dir():
+        raise InputError(Problem(str(path), "a folder", "a file name", "add a file name to it"))
+    if not folder.is_dir():
+        got = f"folder {folder} does not exist"
+        raise InputError(Problem(str(path), got, "", "make it, or name another"))
+    if not os.access(folder, os.W_OK | os.X_OK):
+        got = f"folder {folder} is not writable"
+        raise InputError(Problem(str(path), got, "", "name another place"))
 
 
 def write_whole(path: Path, write: Callable[[Path], None]) -> None:

@@ -216,10 +216,11 @@ def hotelling(moments: Moments, expected: FloatArray) -> GlobalTest:
     -------
     GlobalTest
     """
-    M, covariance = moments.snapshots, moments.covariance
-    scale = np.sqrt(np.diag(covariance))
-    if M < 3 or len(scale) == 0:
+    M = moments.snapshots
+    if M < 3 or len(moments.total) == 0:
         return GlobalTest(np.nan, 0, M, np.nan)
+    covariance = moments.covariance
+    scale = np.sqrt(np.diag(covariance))
     scale[scale == 0.0] = 1.0
     variances, directions = linalg.eigh(covariance / np.outer(scale, scale))
     offset = directions.T @ ((moments.mean - expected) / scale)

@@ -86,7 +86,10 @@ def main(arguments: list[str] | None = None) -> None:
 def run(arguments: list[str] | None = None) -> int:
     """Run the command line and return its exit code."""
     try:
-        outcome: Any = commands.main(arguments, prog_name="pairmc", standalone_mode=False)
+        typed = sys.argv[1:] if arguments is None else arguments
+        outcome: Any = commands.main(
+            arguments, prog_name="pairmc", standalone_mode=False, obj=typed
+        )
     except click.ClickException as error:
         error.show()
         return error.exit_code

@@ -19,9 +19,13 @@ import click
 )
 def plot(files: Sequence[str], picture: str) -> None:
     """Draw the exchange hole of result files: sampled, exact for this system, infinite system."""
-    from pairmc.figures.draw import draw, save
+    from pairmc.figures.draw import draw, picture_format, save
     from pairmc.results.load import load
 
-    figure = draw([load(file) for file in files])
-    save(figure, Path(picture))
+    picture_format(picture)
+    results = [load(file, snapshots=False) for file in files]
+    names = [
+        f"{Path(file).name}: {result.title}" for file, result in zip(files, results, strict=True)
+    ]
+    save(draw(results, names if len(files) > 1 else None), Path(picture))
     click.echo(f"picture: {picture}", err=True)

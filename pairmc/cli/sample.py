@@ -3,12 +3,15 @@
 from __future__ import annotations
 
 import os
+import shlex
 import signal
 import sys
 from pathlib import Path
 from types import FrameType
 
 import click
+
+from pairmc.errors import InputError, PairmcError
 
 # How much is said on standard error.
 QUIET, NORMAL, VERBOSE = 0, 1, 2
@@ -83,17 +86,24 @@ def sample(
                 warn=display.say,
             )
     except (KeyboardInterrupt, TerminatedError) as ended:
-        again = " ".join(["pairmc", "sample", *sys.argv[2:]]) if sys.argv[1:2] == ["sample"] else ""
-        click.echo(
-            f"\nstopped; finished batches are kept in {path}.parts. "
-            f"To go on: {again or f'pairmc sample {run_file}'}",
-            err=True,
-        )
+        click.echo(f"\nstopped; {_how_to_go_on(path)}", err=True)
         sys.stderr.flush()
         # at once: threads are still drawing, and nothing they have is lost that was finished
         os._exit(TERMINATED if isinstance(ended, TerminatedError) else INTERRUPTED)
+    except InputError:
+        raise
+    except (OSError, PairmcError) as error:
+        what = error.strerror if isinstance(error, OSError) and error.strerror else error
+        click.echo(f"pairmc: {path}: {what}; {_how_to_go_on(path)}", err=True)
+        return PairmcError.exit_code
     click.echo(summary_text({"file": str(path)} | summarise(load(path, snapshots=False))))
     return 0
+
+
+def _how_to_go_on(path: Path) -> str:
+    """Return where finished batches are, and the command that goes on, as it was typed."""
+    command = shlex.join(["pairmc", *click.get_current_context().obj])
+    return f"finished batches are kept in {path}.parts. To go on: {command}"
 
 
 def _terminate(number: int, frame: FrameType | None) -> None:

@@ -12,7 +12,7 @@ import xarray as xr
 
 from pairmc.errors import InputError, Problem
 from pairmc.figures.style import inches, style
-from pairmc.files import write_whole
+from pairmc.files import refuse_unless_writable, write_whole
 from pairmc.physics.observables import registry
 
 if TYPE_CHECKING:
@@ -153,11 +153,7 @@ def picture_format(path: str | os.PathLike[str]) -> str:
         allowed = ", ".join(f".{known}" for known in METADATA)
         got = f'a name that ends in "{path.suffix}"' if path.suffix else "a name without a suffix"
         raise InputError(Problem(str(path), got, allowed, "the suffix says which kind of picture"))
-    if not path.parent.is_dir():
-        got = f"folder {path.parent} does not exist"
-        raise InputError(Problem(str(path), got, "", "make it, or name another"))
-    if path.is_dir():
-        raise InputError(Problem(str(path), "a folder", "a file name", "add a file name to it"))
+    refuse_unless_writable(path)
     return kind
 
 

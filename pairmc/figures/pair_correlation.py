@@ -8,6 +8,7 @@ from __future__ import annotations
 
 from collections.abc import Callable
 from dataclasses import dataclass
+from math import floor, log10
 from typing import Any
 
 import numpy as np
@@ -17,6 +18,7 @@ from matplotlib.container import ErrorbarContainer
 from matplotlib.figure import SubFigure
 from matplotlib.legend_handler import HandlerTuple
 from matplotlib.patches import Patch
+from matplotlib.ticker import StrMethodFormatter
 from numpy.typing import ArrayLike, NDArray
 
 from pairmc.errors import InputError, Problem
@@ -301,7 +303,8 @@ def _draw_differences(dataset: xr.Dataset, index: int, axes: Axes, reach: float)
     axes.axhspan(-band, band, color=style.BAND, linewidth=0.0, zorder=0)
     axes.axhline(0.0, color=style.DARK, linewidth=0.5, zorder=1)
     axes.set_ylim(-reach, reach)
-    style.number_ticks(axes.yaxis, 4, whole=True)
+    axes.set_yticks(_whole_ticks(reach))
+    axes.yaxis.set_major_formatter(StrMethodFormatter("{x:.0f}"))
     start, stop, difference, infinite = merged_differences(dataset, index)
     if len(difference) == 0:
         axes.text(0.5, 0.72, "too few pairs", transform=axes.transAxes, ha="center", va="center")
@@ -328,6 +331,14 @@ def _draw_differences(dataset: xr.Dataset, index: int, axes: Axes, reach: float)
         linestyle="none",
         **(marker | {"marker": "x"}),
     )
+
+
+def _whole_ticks(reach: float) -> NDArray[np.float64]:
+    """Return a few whole numbers either side of zero, none so near the edge that labels touch."""
+    power = 10.0 ** max(0, floor(log10(reach / 2.5)))
+    step = next(step for step in (1, 2, 5, 10) if reach / (step * power) <= 2.5) * power
+    most = int(0.85 * reach / step)
+    return np.arange(-most, most + 1, dtype=np.float64) * step
 
 
 def merged_differences(

@@ -22,6 +22,7 @@ if TYPE_CHECKING:
 COLUMN = 85.0
 PAGE = 170.0
 MILLIMETRES_PER_INCH = 25.4
+MILLIMETRES_PER_POINT = MILLIMETRES_PER_INCH / 72.0
 
 # Points; nothing is set smaller than the first.
 FONT_SIZE = 7.0
@@ -129,7 +130,7 @@ def exponent_for(largest: float) -> int:
     return 0 if -2 <= exponent <= 2 else exponent
 
 
-def number_ticks(axis: Axis, most: int, exponent: int = 0, whole: bool = False) -> None:
+def number_ticks(axis: Axis, most: int, exponent: int = 0) -> None:
     """Set round numbers with equal decimals at the ticks of an axis.
 
     Parameters
@@ -140,8 +141,6 @@ def number_ticks(axis: Axis, most: int, exponent: int = 0, whole: bool = False) 
         Intervals between ticks, at most.
     exponent
         Power of ten to take out of the numbers.
-    whole
-        Whole numbers only.
     """
     from matplotlib.ticker import FuncFormatter, MaxNLocator
 
@@ -152,7 +151,7 @@ def number_ticks(axis: Axis, most: int, exponent: int = 0, whole: bool = False) 
         decimals = max((len(number.partition(".")[2]) for number in short), default=0)
         return f"{round(value / scale, decimals) + 0.0:.{decimals}f}".replace("-", "−")
 
-    axis.set_major_locator(MaxNLocator(most, steps=[1, 2, 2.5, 5, 10], integer=whole))
+    axis.set_major_locator(MaxNLocator(most, steps=[1, 2, 2.5, 5, 10]))
     axis.set_major_formatter(FuncFormatter(text))
 
 
@@ -160,8 +159,10 @@ def text_width(text: str, size: float) -> float:
     """Return the width of a plain text in millimetres."""
     from matplotlib.textpath import TextPath
 
+    if not text.strip():
+        return 0.0
     box = TextPath((0.0, 0.0), literal(text), size=size).get_extents()
-    return float(box.width) * MILLIMETRES_PER_INCH / 72.0 if text.strip() else 0.0
+    return float(box.width) * MILLIMETRES_PER_POINT
 
 
 def wrap(text: str, width: float, size: float, lines: int = 3) -> str:
@@ -178,12 +179,20 @@ def wrap(text: str, width: float, size: float, lines: int = 3) -> str:
     lines
         At most so many lines; what is left is cut and marked with an ellipsis.
     """
-    characters = max(len(text), 1)
-    while True:
-        broken = textwrap.wrap(text, characters, max_lines=lines, placeholder=" …")
-        if characters <= 2 or all(text_width(line, size) <= width for line in broken):
-            return "\n".join(broken)
-        characters -= 1
+
+    def broken(characters: int) -> list[str]:
+        return textwrap.wrap(text, characters, max_lines=lines, placeholder=" …")
+
+    # Between what fits and what does not, by halves: the narrowest letters are a quarter as wide
+    # as they are high.
+    fits, too_many = 3, 4 + int(width / (0.25 * size * MILLIMETRES_PER_POINT))
+    while too_many - fits > 1:
+        middle = (fits + too_many) // 2
+        if all(text_width(line, size) <= width for line in broken(middle)):
+            fits = middle
+        else:
+            too_many = middle
+    return "\n".join(broken(fits))
 
 
 def literal(text: str) -> str:

@@ -146,7 +146,7 @@ def _values(
         variables[f"{key}_interval"] = (
             (*variable.dimensions, "bound"),
             np.stack([lower[key], upper[key]], axis=-1),
-            _describe(run, variable, f", {level} interval"),
+            _describe(run, variable, f", {level} interval") | {"level": INTERVAL_LEVEL},
         )
     return variables
 

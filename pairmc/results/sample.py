@@ -15,10 +15,10 @@ from typing import NamedTuple
 import xarray as xr
 
 from pairmc.errors import InputError, Problem
-from pairmc.files import remove_unfinished
+from pairmc.files import refuse_unless_writable, remove_unfinished
 from pairmc.results.fold import fold
 from pairmc.results.load import load
-from pairmc.results.standing import check_target, stored_batches, usable_parts
+from pairmc.results.standing import stored_batches, usable_parts
 from pairmc.runfile.read import read_run_file
 from pairmc.runfile.run import RunFile
 from pairmc.running.batch import run_batch
@@ -138,7 +138,7 @@ def sample_into(
     OSError
         Where the disk refuses; those finished are kept.
     """
-    check_target(path)
+    refuse_unless_writable(path)
     stored = stored_batches(run, path)
     wanted = run.with_batches(_batches_wanted(run, stored, more, warn))
     refuse_unless_it_fits(wanted, path.parent, workers)

@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-import os
 from collections.abc import Callable
 from pathlib import Path
 from typing import Any
@@ -12,25 +11,6 @@ from pairmc.results.load import batches_in, read_attributes, run_settings
 from pairmc.runfile.digest import canonical, differing_keys
 from pairmc.runfile.run import RunFile
 from pairmc.running.parts import DamagedPartError, Parts
-
-
-def check_target(path: Path) -> None:
-    """Refuse an output that cannot be written, before anything is drawn.
-
-    Raises
-    ------
-    InputError
-        Where the folder is missing or not writable, or the name is a folder's.
-    """
-    folder = path.parent
-    if path.is_dir():
-        raise _refusal(path, "a folder", "a file name", "add a file name to it")
-    if not folder.is_dir():
-        raise _refusal(path, f"folder {folder} does not exist", "", "make it, or name another")
-    if not os.access(folder, os.W_OK | os.X_OK):
-        raise _refusal(
-            path, f"folder {folder} is not writable", "", "name another place with --into"
-        )
 
 
 def stored_batches(run: RunFile, path: Path) -> int:
@@ -84,7 +64,3 @@ def _refuse_other_run(run: RunFile, place: str, words: str, settings: dict[str, 
             "name another file with --into, or move that one away",
         )
     )
-
-
-def _refusal(path: Path, got: str, allowed: str, advice: str) -> InputError:
-    return InputError(Problem(str(path), got, allowed, advice))

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import errno
 from collections.abc import Iterator
 from pathlib import Path
 from typing import Any
@@ -77,6 +78,12 @@ def write_result(path: Path, dataset: xr.Dataset, run: RunFile, blocks: Iterator
     """
 
     def write(temporary: Path) -> None:
+        try:
+            fill(temporary)
+        except RuntimeError as error:  # what netCDF makes of a full disk
+            raise OSError(errno.EIO, f"the result could not be written ({error})") from error
+
+    def fill(temporary: Path) -> None:
         bare, bounds = _without_bounds(dataset)
         bare.to_netcdf(temporary, engine="netcdf4", encoding=encoding(dataset))
         kept = sum(kept_in_batch(run, batch) for batch in range(run.batches))
