@@ -20,7 +20,7 @@ _WORDS = {
 
 
 @click.command()
-@click.argument("run_file", metavar="RUN.toml")
+@click.argument("run_file", metavar="RUN.toml", type=click.Path())
 def check(run_file: str) -> None:
     """Read a run file and say what it means: scales, shells, time, memory, file size.
 

@@ -12,7 +12,7 @@ from pairmc.cli import text
 
 
 @click.command()
-@click.argument("files", metavar="FILE…", nargs=-1, required=True)
+@click.argument("files", metavar="FILE…", nargs=-1, required=True, type=click.Path())
 @click.option("--json", "as_json", is_flag=True, help="Print one JSON list, an entry a file.")
 def describe(files: Sequence[str], as_json: bool) -> None:
     """Say what result files hold: scales, hole depth, and how sample and expectation agree."""

@@ -9,11 +9,12 @@ import click
 
 
 @click.command()
-@click.argument("files", metavar="FILE…", nargs=-1, required=True)
+@click.argument("files", metavar="FILE…", nargs=-1, required=True, type=click.Path())
 @click.option(
     "--into",
     "picture",
     metavar="PICTURE",
+    type=click.Path(),
     required=True,
     help="Picture to write: .png, .pdf, .svg.",
 )

@@ -18,11 +18,12 @@ QUIET, NORMAL, VERBOSE = 0, 1, 2
 
 
 @click.command()
-@click.argument("run_file", metavar="RUN.toml")
+@click.argument("run_file", metavar="RUN.toml", type=click.Path())
 @click.option(
     "--into",
     "target",
     metavar="FILE.nc",
+    type=click.Path(),
     help="Result file; default: the run file's name with .nc, beside it.",
 )
 @click.option(
