@@ -31,7 +31,9 @@ def refuse_unless_writable(path: Path) -> None:
         raise InputError(Problem(str(path), got, "", "name another place"))
 
 
-def write_whole(path: Path, write: Callable[[Path], None]) -> None:
+def write_whole(
+    path: Path, write: Callable[[Path], None], check: Callable[[Path], None] = lambda path: None
+) -> None:
     """Write a file under a temporary name, force it to the disk, and only then give it its name.
 
     A reader sees the old file or the new one, never a piece; after a crash or on a full disk the
@@ -43,6 +45,8 @@ def write_whole(path: Path, write: Callable[[Path], None]) -> None:
         The file's name; replaced where it exists.
     write
         Writes the contents to the path it is given, in the same folder.
+    check
+        Reads them back from there and raises if they are not right; the old file then stays.
 
     Raises
     ------
@@ -54,6 +58,7 @@ def write_whole(path: Path, write: Callable[[Path], None]) -> None:
         write(temporary)
         with temporary.open("rb") as file:
             os.fsync(file.fileno())
+        check(temporary)
         os.replace(temporary, path)
     except BaseException:
         temporary.unlink(missing_ok=True)

@@ -19,7 +19,7 @@ from pairmc.running.parts import DamagedPartError, Parts
 
 
 def fold(run: RunFile, path: Path, parts: Parts, stored: int, warn: Callable[[str], None]) -> None:
-    """Fold batches into the result file, read it back, and only then delete their parts.
+    """Fold batches into the result file, read it back, put it in place, delete the parts.
 
     Parameters
     ----------
@@ -37,7 +37,8 @@ def fold(run: RunFile, path: Path, parts: Parts, stored: int, warn: Callable[[st
     Raises
     ------
     PairmcError
-        Where what was read back is not what was written, or a part is damaged; the parts are kept.
+        Where what was read back is not what was written, or a part is damaged; the old file and the
+        parts are kept.
     OSError
         Where the disk refuses; the old file and the parts are kept.
     """
@@ -46,8 +47,14 @@ def fold(run: RunFile, path: Path, parts: Parts, stored: int, warn: Callable[[st
         if len(collected.made) > 1:
             warn("batches come from different versions or processors: their last bits may differ")
         dataset = build_dataset(run, collected)
-        write_result(path, dataset, run, _kept(run, path, parts, stored))
-        _compare(path, dataset, _kept(run, path, parts, stored))
+
+        def kept() -> Iterator[Block]:
+            return _kept(run, path, parts, stored)
+
+        def check(written: Path) -> None:
+            _compare(written, dataset, kept())
+
+        write_result(path, dataset, run, kept(), check)
     except DamagedPartError as error:
         raise PairmcError(
             f"a part was damaged while it was folded ({error}); the same command draws it again"
@@ -79,7 +86,7 @@ def _compare(path: Path, dataset: xr.Dataset, blocks: Iterator[Block]) -> None:
     result = load(path, snapshots=False)
     for name in dataset.data_vars:
         if not np.array_equal(dataset[name].values, result[name].values, equal_nan=True):
-            raise PairmcError(f"{path}: {name} was not read back as written; the parts are kept")
+            raise PairmcError(f"{name} was not read back from the disk as it was written")
     with netCDF4.Dataset(path) as file:
         file.set_auto_mask(False)
         start = 0
@@ -89,5 +96,5 @@ def _compare(path: Path, dataset: xr.Dataset, blocks: Iterator[Block]) -> None:
                 np.array_equal(file["position"][rows], position)
                 and np.array_equal(file["component"][rows], component)
             ):
-                raise PairmcError(f"{path}: snapshots were not read back as written")
+                raise PairmcError("snapshots were not read back from the disk as they were written")
             start = rows.stop

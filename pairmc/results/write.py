@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import errno
-from collections.abc import Iterator
+from collections.abc import Callable, Iterator
 from pathlib import Path
 from typing import Any
 
@@ -56,8 +56,14 @@ def kept_in_file(path: Path, run: RunFile) -> Iterator[Block]:
             yield int(batch), position, file["component"][first:last]
 
 
-def write_result(path: Path, dataset: xr.Dataset, run: RunFile, blocks: Iterator[Block]) -> None:
-    """Write a result file under a temporary name and put it in place when it is complete.
+def write_result(
+    path: Path,
+    dataset: xr.Dataset,
+    run: RunFile,
+    blocks: Iterator[Block],
+    check: Callable[[Path], None],
+) -> None:
+    """Write a result file under a temporary name and put it in place when it has been checked.
 
     Parameters
     ----------
@@ -70,6 +76,9 @@ def write_result(path: Path, dataset: xr.Dataset, run: RunFile, blocks: Iterator
     blocks
         The kept snapshots, batch by batch; one batch is in memory at a time. They may come from
         the file that is about to be replaced.
+
+    check
+        Reads the finished file back before it gets its name.
 
     Raises
     ------
@@ -93,7 +102,7 @@ def write_result(path: Path, dataset: xr.Dataset, run: RunFile, blocks: Iterator
             if kept:
                 _append_kept(file, run, kept, blocks)
 
-    write_whole(path, write)
+    write_whole(path, write, check)
 
 
 def _without_bounds(dataset: xr.Dataset) -> tuple[xr.Dataset, dict[str, str]]:

@@ -6,6 +6,7 @@ the same command must end with the very bits of an undisturbed run, and leave no
 
 from __future__ import annotations
 
+import ctypes
 import os
 import resource
 import signal
@@ -37,7 +38,16 @@ seed = 5
 keep_snapshots = 4000
 """
 
-NOBODY = 65534
+# Linux: drop a capability from what a process and its children may ever have; the capabilities to
+# pass over file permissions (prctl(2), capabilities(7)).
+_DROP_FROM_BOUNDING_SET = 24
+_PASS_OVER_PERMISSIONS = (1, 2)
+
+
+def obey_permissions() -> None:
+    """Make the program that is started next obey file permissions, also as root."""
+    for capability in _PASS_OVER_PERMISSIONS if os.geteuid() == 0 else ():
+        ctypes.CDLL(None).prctl(_DROP_FROM_BOUNDING_SET, capability, 0, 0, 0)
 
 
 @dataclass
@@ -200,12 +210,8 @@ def take_permission_away(
     campaign: Campaign, tally: Tally, rng: np.random.Generator, cases: int, seconds: float
 ) -> None:
     """Make the folders read-only while a run without privileges is writing into them."""
-    root = os.geteuid() == 0
     for _ in range(cases):
-        if root:
-            for path in (campaign.folder, *campaign.folder.rglob("*")):
-                os.chown(path, NOBODY, NOBODY)
-        process = campaign.start(**({"user": NOBODY, "group": NOBODY} if root else {}))
+        process = campaign.start(preexec_fn=obey_permissions)
         time.sleep(rng.uniform(1.0, seconds))
         folders = [campaign.folder, campaign.parts.folder]
         for folder in filter(Path.exists, folders):

@@ -122,6 +122,7 @@ def test_parts_stay_until_the_result_has_been_read_back(
     with pytest.raises(pairmc.errors.PairmcError, match="pair_count was not read back"):
         sample_into(small_run, tmp_path / "run.nc")
     assert len(Parts(tmp_path / "run.nc.parts").finished()) == 8
+    assert not (tmp_path / "run.nc").exists()
 
 
 def test_the_python_function_takes_a_path_and_keeps_nothing(
