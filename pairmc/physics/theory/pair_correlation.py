@@ -192,8 +192,8 @@ def bulk_amplitude(dimension: int, z: NDArray[np.float64]) -> NDArray[np.float64
     if dimension == 1:
         return np.sinc(z / np.pi)
     if dimension == 2:
-        return special.j0(z) + special.jv(2, z)  # = 2 J₁(z)/z
-    return special.spherical_jn(0, z) + special.spherical_jn(2, z)  # = 3 j₁(z)/z
+        return np.asarray(special.j0(z) + special.jv(2, z))  # = 2 J₁(z)/z
+    return np.asarray(special.spherical_jn(0, z) + special.spherical_jn(2, z))  # = 3 j₁(z)/z
 
 
 def _bulk_like(
