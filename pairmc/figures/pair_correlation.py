@@ -6,8 +6,6 @@ bins and drawn as steps, so that a point is to be held against the step it stand
 
 from __future__ import annotations
 
-from collections.abc import Callable
-from dataclasses import dataclass
 from math import floor, log10
 from typing import Any
 
@@ -19,10 +17,11 @@ from matplotlib.figure import SubFigure
 from matplotlib.legend_handler import HandlerTuple
 from matplotlib.patches import Patch
 from matplotlib.ticker import StrMethodFormatter
-from numpy.typing import ArrayLike, NDArray
+from numpy.typing import NDArray
 
 from pairmc.errors import InputError, Problem
 from pairmc.figures import style
+from pairmc.figures.pair_scales import label_separation, label_values, scales_of
 from pairmc.results.audit import INTERVAL_LEVEL
 from pairmc.statistics import t_quantile
 
@@ -38,9 +37,6 @@ _RATIO = 2.0
 # Points; smaller where there are more bins than this.
 _MARKER_SIZE = 2.2
 _CROWDED = 100
-
-# Characters of a pair's name on one line.
-_LONGEST_LABEL = 22
 
 # Room above the highest point and below the lowest, as a part of what is shown.
 _MARGIN = 0.08
@@ -83,7 +79,7 @@ def draw(dataset: xr.Dataset, panel: SubFigure, heading: str) -> None:
     axes = panel.subplots(
         2 * rows, columns, squeeze=False, height_ratios=[_RATIO, 1.0] * rows, sharex=True
     )
-    scales = _scales(dataset)
+    scales = scales_of(dataset)
     limits = _limits(dataset)
     reach = _reach(dataset)
     for index in range(rows * columns):
@@ -96,8 +92,8 @@ def draw(dataset: xr.Dataset, panel: SubFigure, heading: str) -> None:
         first, last = column == 0, index in (dataset.sizes["pair"] - 1, (row + 1) * columns - 1)
         _draw_values(dataset, index, upper, limits)
         _draw_differences(dataset, index, lower, reach)
-        _label_separation(upper, lower, scales)
-        _label_values(dataset, index, upper, scales, first, last)
+        label_separation(upper, lower, scales)
+        label_values(dataset, index, upper, scales, first, last)
         if first:
             lower.set_ylabel("difference /\nstandard error")
         else:
@@ -131,45 +127,6 @@ def in_words(dataset: xr.Dataset) -> str:
         verdict = "the sample differs from the exact values"
     bins = "1 merged bin" if merged == 1 else f"All {merged} merged bins together"
     return f"{bins}: p = {p:.2g}, {verdict}."
-
-
-@dataclass(frozen=True)
-class _Scales:
-    """What the axes are measured in.
-
-    Parameters
-    ----------
-    unit
-        Length unit as in the file, empty where there is none.
-    dimension
-        1, 2 or 3.
-    length_exponent, density_exponent
-        Powers of ten taken out of the numbers at the ticks.
-    wavenumber
-        k_F of the majority, per length unit.
-    majority
-        Name of the majority component, empty where there is no other.
-    """
-
-    unit: str
-    dimension: int
-    length_exponent: int
-    density_exponent: int
-    wavenumber: float
-    majority: str
-
-
-def _scales(dataset: xr.Dataset) -> _Scales:
-    separation = dataset["separation"]
-    majority = int(np.argmax(dataset["population"].values))
-    return _Scales(
-        unit=separation.attrs.get("length_unit", ""),
-        dimension=dataset.sizes["axis"],
-        length_exponent=style.exponent_for(float(separation.max())),
-        density_exponent=style.exponent_for(float(dataset["density"].max())),
-        wavenumber=float(dataset["fermi_wavenumber"][majority]),
-        majority=str(dataset["spin"].values[majority]) if dataset.sizes["spin"] > 1 else "",
-    )
 
 
 def _shape(dataset: xr.Dataset) -> tuple[int, int]:
@@ -220,11 +177,6 @@ def _is_like(label: str) -> bool:
     """Return whether a pair is of one component with itself."""
     first, second = label.split("-")
     return first == second
-
-
-def _title(label: str) -> str:
-    """Return the name of a pair, long ones on two lines."""
-    return label if len(label) <= _LONGEST_LABEL else label.replace("-", "-\n")
 
 
 def _marker(dataset: xr.Dataset, index: int) -> dict[str, Any]:
@@ -369,53 +321,6 @@ def merged_differences(
     error = merged["pair_correlation_merged_error"].values
     infinite = (np.array(average) - exact) / np.where(error > 0.0, error, np.nan)
     return edges[first], edges[after], part["pair_correlation_difference"].values[first], infinite
-
-
-def _label_separation(upper: Axes, lower: Axes, scales: _Scales) -> None:
-    """Name both scales of the separation: with its unit below, times k_F above."""
-    unit = style.unit_in_words(scales.unit, 1, scales.length_exponent)
-    lower.set_xlabel(f"separation $r$ ({unit})")
-    style.number_ticks(lower.xaxis, 5, scales.length_exponent)
-    upper.tick_params(labelbottom=False)
-    lower.tick_params(labelbottom=True)
-    top = upper.secondary_xaxis("top", functions=_linear(scales.wavenumber, 0.0))
-    style.number_ticks(top.xaxis, 6)
-    of = f" of {scales.majority}" if scales.majority else ""
-    top.set_xlabel(rf"$k_\mathrm{{F}} r$  ($k_\mathrm{{F}}${of})" if of else r"$k_\mathrm{F} r$")
-
-
-def _label_values(
-    dataset: xr.Dataset, index: int, axes: Axes, scales: _Scales, first: bool, last: bool
-) -> None:
-    """Name both scales of the values: g at the left, the exchange hole n_s'(g − 1) at the right."""
-    label = str(dataset["pair"].values[index])
-    second = list(dataset["spin"].values).index(label.split("-")[1])
-    density = float(dataset["density"][second])
-    axes.set_title(_title(label))
-    style.number_ticks(axes.yaxis, 6)
-    if first:
-        axes.set_ylabel("pair correlation $g$")
-    else:
-        axes.tick_params(labelleft=False)
-    right = axes.secondary_yaxis("right", functions=_linear(density, 1.0))
-    style.number_ticks(right.yaxis, 6, scales.density_exponent)
-    if last:
-        unit = style.unit_in_words(scales.unit, -scales.dimension, scales.density_exponent)
-        right.set_ylabel(f"exchange hole ({unit})")
-
-
-def _linear(
-    slope: float, zero: float
-) -> tuple[Callable[[ArrayLike], ArrayLike], Callable[[ArrayLike], ArrayLike]]:
-    """Return the function slope·(x − zero) and its inverse."""
-
-    def forward(x: ArrayLike) -> ArrayLike:
-        return slope * (np.asarray(x) - zero)
-
-    def back(y: ArrayLike) -> ArrayLike:
-        return np.asarray(y) / slope + zero
-
-    return forward, back
 
 
 def _legend_entries(dataset: xr.Dataset, axes: NDArray[Any]) -> tuple[list[Any], list[str]]:

@@ -18,7 +18,7 @@ import pytest
 from scipy.stats import ttest_1samp
 
 from pairmc.physics.axes.tables import fill_plane_waves
-from pairmc.physics.sampling import chain, features
+from pairmc.physics.sampling import acceptance, chain, complement, features, matrices
 from tests.oracles import enumeration, ring
 from tests.physics.gases import BRICK, FLAT, draw, make_sampler, make_system, positions_of
 
@@ -123,7 +123,7 @@ def accept(gram: np.ndarray, thresholds: np.ndarray, most: int, plain: bool = Fa
     size = len(gram)
     factor = np.zeros((size + 1, size + 1), dtype=gram.dtype)
     chosen = np.full(size, -1, dtype=np.int64)
-    kernel = chain.accept_in_order.py_func if plain else chain.accept_in_order
+    kernel = acceptance.accept_in_order.py_func if plain else acceptance.accept_in_order
     accepted = kernel(np.ascontiguousarray(gram), thresholds, most, factor, chosen)
     return list(chosen[:accepted]), factor[:accepted, :accepted]
 
@@ -174,7 +174,7 @@ class TestAcceptInOrder:
         assert accept(np.diag([-1e-16, 0.5, -0.3]).astype(kind), np.zeros(3), 3, plain)[0] == [1]
 
     def test_floor_of_the_residual(self):
-        near = np.diag([0.5 * chain.RESIDUAL_FLOOR, 2 * chain.RESIDUAL_FLOOR])
+        near = np.diag([0.5 * acceptance.RESIDUAL_FLOOR, 2 * acceptance.RESIDUAL_FLOOR])
         assert accept(near, np.zeros(2), 2)[0] == [1]
 
 
@@ -188,24 +188,24 @@ class TestLinearAlgebra:
         named = np.array([7, 0, 3])
         norms = np.empty(11)
         for form in (lambda kernel: kernel, lambda kernel: kernel.py_func):
-            form(chain.column_norms)(rows, norms)
+            form(matrices.column_norms)(rows, norms)
             assert norms == pytest.approx((np.abs(rows) ** 2).sum(axis=0))
-            assert np.array_equal(form(chain.gather_columns)(rows, named), rows[:, named].T)
+            assert np.array_equal(form(matrices.gather_columns)(rows, named), rows[:, named].T)
             few = np.array([4, 1])
-            assert np.array_equal(form(chain.gather_rows)(rows, few), rows[few])
-            assert np.array_equal(form(chain.conjugated)(rows), rows.conj())
+            assert np.array_equal(form(matrices.gather_rows)(rows, few), rows[few])
+            assert np.array_equal(form(matrices.conjugated)(rows), rows.conj())
             less = rows.copy()
-            form(chain.subtract)(less, 0.25 * rows)
+            form(matrices.subtract)(less, 0.25 * rows)
             assert less == pytest.approx(0.75 * rows)
-            assert form(chain.gram_matrix)(rows) == pytest.approx(rows @ rows.conj().T)
+            assert form(matrices.gram_matrix)(rows) == pytest.approx(rows @ rows.conj().T)
             factor = np.linalg.cholesky(rows @ rows.conj().T)
             junk = factor + 9.0 * np.triu(np.ones((5, 5)), k=1)  # above the diagonal: not read
-            inverse = form(chain.invert_lower)(junk, 4)
+            inverse = form(matrices.invert_lower)(junk, 4)
             assert inverse @ factor[:4, :4] == pytest.approx(np.eye(4), abs=1e-12)
 
     def test_points_above_their_thresholds(self):
         residuals, thresholds = np.array([0.3, 0.1, 0.9, 0.5]), np.array([0.2, 0.2, 0.9, 0.1])
-        for kernel in (chain.passing_points, chain.passing_points.py_func):
+        for kernel in (acceptance.passing_points, acceptance.passing_points.py_func):
             assert list(kernel(residuals, thresholds)) == [0, 3]
 
     def test_block_size(self):
@@ -244,8 +244,8 @@ class TestLinearAlgebra:
         for placed in range(0, int(chain.SWITCH * population), 7):
             vectors = np.ascontiguousarray(features[placed : placed + 7])
             held = np.ascontiguousarray((basis[:placed] @ vectors.T).T)
-            gram = chain.gram_matrix(vectors) - chain.gram_matrix(held)
-            inverse = chain.invert_lower(np.linalg.cholesky(gram), 7)
+            gram = matrices.gram_matrix(vectors) - matrices.gram_matrix(held)
+            inverse = matrices.invert_lower(np.linalg.cholesky(gram), 7)
             chain.extend_basis(basis, placed, vectors, held, inverse)
         rows = basis[: placed + 7]
         assert rows @ rows.T == pytest.approx(np.eye(placed + 7), abs=1e-11)
@@ -254,12 +254,12 @@ class TestLinearAlgebra:
 def check_complement(basis: np.ndarray, accuracy: float) -> None:
     """Check that the complement is orthonormal and orthogonal to the basis."""
     placed, size = basis.shape
-    for kernel in (chain.complement_of, chain.complement_of.py_func):
-        complement = kernel(np.random.default_rng(placed), basis)
-        assert complement.shape == (size - placed, size)
-        identity = complement @ complement.conj().T
+    for kernel in (complement.complement_of, complement.complement_of.py_func):
+        remaining = kernel(np.random.default_rng(placed), basis)
+        assert remaining.shape == (size - placed, size)
+        identity = remaining @ remaining.conj().T
         assert identity == pytest.approx(np.eye(size - placed), abs=accuracy)
-        assert np.abs(complement @ basis.conj().T).max() < accuracy
+        assert np.abs(remaining @ basis.conj().T).max() < accuracy
 
 
 class TestComplement:
@@ -302,30 +302,30 @@ class TestComplement:
         generator = tilt * random_matrix(rng, (20, 20), kind)
         rotation = np.linalg.qr(np.eye(20) + generator - generator.conj().T)[0]
         basis = np.ascontiguousarray((np.eye(20) @ rotation)[5:])
-        check_complement(basis, chain.COMPLEMENT_ERROR)
+        check_complement(basis, complement.COMPLEMENT_ERROR)
 
     def test_a_complement_that_is_not_orthonormal_is_noticed(self):
         rng = np.random.default_rng(12)
         rows = orthonormal_rows(rng, 40, 40, np.float64)
-        basis, complement = rows[:26].copy(), rows[26:].copy()
-        assert chain.orthonormality_error(rng, basis, complement) < 1e-13
-        complement[3] += 1e-6 * complement[5]
-        assert 1e-7 < chain.orthonormality_error(rng, basis, complement) < 1e-5
-        complement[3] = rows[29] + 1e-6 * rows[2]
-        assert 1e-7 < chain.orthonormality_error(rng, basis, complement) < 1e-5
+        basis, remaining = rows[:26].copy(), rows[26:].copy()
+        assert complement.orthonormality_error(rng, basis, remaining) < 1e-13
+        remaining[3] += 1e-6 * remaining[5]
+        assert 1e-7 < complement.orthonormality_error(rng, basis, remaining) < 1e-5
+        remaining[3] = rows[29] + 1e-6 * rows[2]
+        assert 1e-7 < complement.orthonormality_error(rng, basis, remaining) < 1e-5
 
     @pytest.mark.parametrize("kind", KINDS)
     @pytest.mark.parametrize(("left", "accepted"), [(12, 1), (12, 5), (12, 12), (7, 3), (1, 1)])
     def test_reflections_take_out_the_accepted_span_and_no_more(self, kind, left, accepted):
         rng = np.random.default_rng([11, left, accepted])
-        for kernel in (chain.reflect, chain.reflect.py_func):
-            complement = orthonormal_rows(rng, 12, 30, kind)
-            before = complement[:left].copy()
+        for kernel in (complement.reflect, complement.reflect.py_func):
+            remaining = orthonormal_rows(rng, 12, 30, kind)
+            before = remaining[:left].copy()
             vectors = random_matrix(rng, (accepted, left), kind)
             vectors[0, 0] *= 1e-9 if accepted > 1 else 1.0
             points = before.conj().T @ vectors.T  # their feature vectors, as far as held
-            kernel(complement, left, vectors.copy())
-            after = complement[: left - accepted]
+            kernel(remaining, left, vectors.copy())
+            after = remaining[: left - accepted]
             identity = after @ after.conj().T
             assert identity == pytest.approx(np.eye(left - accepted), abs=1e-13)
             assert np.abs(after @ points).max(initial=0.0) < 1e-12
@@ -334,19 +334,19 @@ class TestComplement:
             assert after.conj().T @ after == pytest.approx(kept, abs=1e-12)
 
     def test_a_head_of_exactly_zero(self):
-        complement = np.eye(4)
+        remaining = np.eye(4)
         vectors = np.array([[0.0, 0.6, 0.8, 0.0]])
-        chain.reflect(complement, 4, vectors.copy())
-        assert np.abs(complement[:3] @ vectors[0]).max() < 1e-15
-        assert complement[:3] @ complement[:3].T == pytest.approx(np.eye(3), abs=1e-15)
+        complement.reflect(remaining, 4, vectors.copy())
+        assert np.abs(remaining[:3] @ vectors[0]).max() < 1e-15
+        assert remaining[:3] @ remaining[:3].T == pytest.approx(np.eye(3), abs=1e-15)
 
     def test_many_reflections_stay_orthonormal(self):
         """One point at a time from 200 down to 1: the error of each step adds, none grows."""
         rng = np.random.default_rng(12)
-        complement = orthonormal_rows(rng, 200, 260, np.float64)
+        remaining = orthonormal_rows(rng, 200, 260, np.float64)
         for left in range(200, 1, -1):
-            chain.reflect(complement, left, rng.standard_normal((1, left)))
-        assert np.linalg.norm(complement[0]) == pytest.approx(1.0, abs=1e-13)
+            complement.reflect(remaining, left, rng.standard_normal((1, left)))
+        assert np.linalg.norm(remaining[0]) == pytest.approx(1.0, abs=1e-13)
 
 
 class TestWholeSnapshots:
@@ -367,7 +367,7 @@ class TestWholeSnapshots:
         assert np.isfinite(logarithm)
         assert abs(sign) == pytest.approx(1.0)
         residuals = np.abs(np.diag(np.linalg.qr(waves)[1])) ** 2
-        assert np.all(residuals > chain.RESIDUAL_FLOOR)
+        assert np.all(residuals > acceptance.RESIDUAL_FLOOR)
         assert residuals.max() <= 1.0 + 1e-12
         assert np.log(residuals).sum() == pytest.approx(2 * logarithm, rel=1e-9)
         # Control: independent uniform points come closer to a vanishing determinant.

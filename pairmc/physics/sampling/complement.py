@@ -1,0 +1,195 @@
+"""The complement: an orthonormal basis of the span that the chosen points have left over.
+
+It is made once in a snapshot, from the basis of the chosen points, and shrinks by reflections.
+"""
+
+from __future__ import annotations
+
+import numpy as np
+
+from pairmc.compiled import kernel
+from pairmc.physics.sampling.acceptance import accept_in_order
+from pairmc.physics.sampling.matrices import (
+    conjugated,
+    gather_columns,
+    gather_rows,
+    invert_lower,
+    multiply,
+)
+
+# Smallest squared pivot of a row that may enter the complement, times N. Well below 1, so that
+# enough rows pass: the pivots that remain add up to the number of rows still wanted.
+PIVOT_FLOOR = 1e-3
+
+# Largest measured departure of the complement from orthonormal.
+COMPLEMENT_ERROR = 1e-9
+
+
+@kernel
+def shuffled(rng, size):
+    """Return 0 … size − 1 in random order."""
+    order = np.arange(size)
+    for i in range(size - 1, 0, -1):
+        j = int(rng.random() * (i + 1))
+        order[i], order[j] = order[j], order[i]
+    return order
+
+
+@kernel
+def residual_rows(basis, coordinates):
+    """Return the named rows of 1 − B†B: unit vectors projected on what the basis leaves."""
+    rows = multiply(conjugated(gather_columns(basis, coordinates)), basis)
+    for j in range(coordinates.size):
+        row = rows[j]
+        for n in range(row.size):
+            row[n] = -row[n]
+        row[coordinates[j]] += 1.0
+    return rows
+
+
+@kernel
+def orthonormality_error(rng, basis, rows):
+    """Return an estimate of how far `rows` are from orthonormal and orthogonal to `basis`.
+
+    The longest change of a random vector of signs z under rows rows†, and the longest component of
+    rows† z in the basis, for two such vectors: about the error matrix's mean entry times √size.
+    """
+    size, orbitals = rows.shape
+    worst = 0.0
+    for _ in range(2):
+        signs = np.empty((1, size), dtype=rows.dtype)
+        for j in range(size):
+            signs[0, j] = 1.0 if rng.random() < 0.5 else -1.0
+        image = conjugated(multiply(signs, rows)).reshape(orbitals, 1)
+        back = multiply(rows, image)
+        for j in range(size):
+            worst = max(worst, abs(back[j, 0] - signs[0, j]))
+        held = multiply(basis, image)
+        for k in range(held.shape[0]):
+            worst = max(worst, abs(held[k, 0]))
+    return worst
+
+
+@kernel
+def project_coordinates(basis, order):
+    """Return rows that span the complement of `basis`: projected unit vectors, orthonormalised.
+
+    Unit vectors are taken in the given order, projected on the complement and orthonormalised by a
+    Cholesky factorisation of their inner products, which are elements of the projector itself.
+    Those that the ones before nearly span (pivot below `PIVOT_FLOOR`/N) are passed over.
+    """
+    placed, orbitals = basis.shape
+    wanted = orbitals - placed
+    candidates = min(wanted + 4, orbitals)
+    while True:
+        coordinates = order[:candidates].copy()
+        rows = residual_rows(basis, coordinates)
+        gram = conjugated(gather_columns(rows, coordinates))  # the projector is Hermitian
+        # one spare row: accept_in_order works in the row that comes next
+        factor = np.zeros((wanted + 1, wanted + 1), dtype=basis.dtype)
+        floors = np.full(candidates, PIVOT_FLOOR / orbitals)
+        chosen = np.empty(candidates, dtype=np.int64)
+        found = accept_in_order(gram, floors, wanted, factor, chosen)
+        if found == wanted:
+            return multiply(invert_lower(factor, wanted), gather_rows(rows, chosen[:wanted]))
+        candidates = min(candidates + wanted - found + 4, orbitals)
+
+
+@kernel
+def complement_of(rng, basis):
+    """Return an orthonormal basis of all that is orthogonal to the rows of `basis`.
+
+    Made from unit vectors in random order: random ones are never nearly dependent as a whole,
+    while neighbouring ones are (on a ring, those of the highest wave numbers alone span the
+    complement only to exponentially small pivots). The result is measured, and made anew from
+    another order in the rare case that it is not orthonormal to `COMPLEMENT_ERROR`.
+
+    Parameters
+    ----------
+    rng : numpy.random.Generator
+        Gives the order.
+    basis : array (placed, orbital)
+        Orthonormal rows, complex-conjugated.
+
+    Returns
+    -------
+    array (orbital − placed, orbital)
+        Orthonormal rows, complex-conjugated.
+    """
+    best = project_coordinates(basis, shuffled(rng, basis.shape[1]))
+    error = orthonormality_error(rng, basis, best)
+    for _ in range(20):
+        if error < COMPLEMENT_ERROR:
+            break
+        other = project_coordinates(basis, shuffled(rng, basis.shape[1]))
+        other_error = orthonormality_error(rng, basis, other)
+        if other_error < error:
+            best, error = other, other_error
+    return best
+
+
+@kernel
+def reflect(complement, left, vectors):
+    """Take the span of accepted points out of the complement by Householder reflections.
+
+    With Ψ the coefficients of the accepted points in the complement (one column a point), unitary
+    reflections U† bring Ψ to upper-triangular form; U† applied to the complement then leaves the
+    accepted span in the first rows, which are dropped. Compact form U = 1 − V T V†.
+
+    Parameters
+    ----------
+    complement : array (at least left, orbital)
+        Its first `left` rows are replaced by the ``left − accepted`` rows that remain.
+    left : int
+        Rows in use.
+    vectors : array (accepted, left)
+        Coefficients of the accepted points; overwritten.
+    """
+    accepted = vectors.shape[0]
+    reflectors = np.zeros((accepted, left), dtype=vectors.dtype)  # rows are V†
+    triangle = np.zeros((accepted, accepted), dtype=vectors.dtype)
+    for j in range(accepted):
+        column = vectors[j]
+        length = 0.0
+        for l in range(j, left):
+            length += (column[l] * np.conj(column[l])).real
+        length = np.sqrt(length)
+        head = column[j]
+        size = np.abs(head)
+        phase = head / size if size > 0.0 else head + 1.0
+        # v = column + phase·length·e_j; the sign avoids cancellation
+        column[j] = head + phase * length
+        scale = 1.0 / np.sqrt(length * (length + size))
+        reflector = reflectors[j]
+        for l in range(j, left):
+            reflector[l] = np.conj(column[l]) * scale  # ‖v‖² = 2, so H = 1 − v v†
+        for i in range(j + 1, accepted):
+            target = vectors[i]
+            overlap = target[j] * 0.0
+            for l in range(j, left):
+                overlap += reflector[l] * target[l]
+            for l in range(j, left):
+                target[l] -= overlap * np.conj(reflector[l])
+        triangle[j, j] = 1.0
+        for i in range(j):
+            other = reflectors[i]
+            overlap = head * 0.0
+            for l in range(j, left):
+                overlap += other[l] * np.conj(reflector[l])
+            for m in range(i + 1):
+                triangle[m, j] -= triangle[m, i] * overlap
+    adjoint = np.empty((accepted, accepted), dtype=vectors.dtype)
+    for j in range(accepted):
+        for i in range(accepted):
+            adjoint[j, i] = np.conj(triangle[i, j])
+    lower = np.empty((left - accepted, accepted), dtype=vectors.dtype)
+    for l in range(left - accepted):
+        for j in range(accepted):
+            lower[l, j] = np.conj(reflectors[j, l + accepted])
+    change = multiply(lower, multiply(adjoint, multiply(reflectors, complement[:left])))
+    for l in range(left - accepted):
+        row = complement[l]
+        source = complement[l + accepted]
+        less = change[l]
+        for n in range(row.size):
+            row[n] = source[n] - less[n]
