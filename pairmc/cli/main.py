@@ -3,9 +3,11 @@
 from __future__ import annotations
 
 import os
+import signal
 import sys
 from importlib import import_module
 from importlib.metadata import version
+from types import FrameType
 from typing import Any
 
 import click
@@ -83,8 +85,21 @@ def main(arguments: list[str] | None = None) -> None:
     sys.exit(run(arguments))
 
 
+def _terminate(number: int, frame: FrameType | None) -> None:
+    """End as an interrupt from the keyboard would."""
+    raise TerminatedError
+
+
 def run(arguments: list[str] | None = None) -> int:
     """Run the command line and return its exit code."""
+    before = signal.signal(signal.SIGTERM, _terminate)
+    try:
+        return _run(arguments)
+    finally:
+        signal.signal(signal.SIGTERM, before)
+
+
+def _run(arguments: list[str] | None) -> int:
     try:
         typed = sys.argv[1:] if arguments is None else arguments
         outcome: Any = commands.main(

@@ -4,10 +4,8 @@ from __future__ import annotations
 
 import os
 import shlex
-import signal
 import sys
 from pathlib import Path
-from types import FrameType
 
 import click
 
@@ -73,7 +71,6 @@ def sample(
 
     path = Path(target) if target else default_result_path(run)
     level = QUIET if quiet else VERBOSE if verbose else NORMAL
-    signal.signal(signal.SIGTERM, _terminate)
     try:
         with ProgressDisplay(run, level) as display:
             for message in open_shell_messages(run):
@@ -105,10 +102,3 @@ def _how_to_go_on(path: Path) -> str:
     """Return where finished batches are, and the command that goes on, as it was typed."""
     command = shlex.join(["pairmc", *click.get_current_context().obj])
     return f"finished batches are kept in {path}.parts. To go on: {command}"
-
-
-def _terminate(number: int, frame: FrameType | None) -> None:
-    """End the run as an interrupt from the keyboard would."""
-    from pairmc.cli.main import TerminatedError
-
-    raise TerminatedError
