@@ -172,6 +172,7 @@ def test_all_mistakes_of_a_run_file_are_named_at_once(call: Call, run_file: Path
 
 
 @pytest.mark.parametrize(("number", "code"), [(signal.SIGINT, 130), (signal.SIGTERM, 143)])
+@pytest.mark.usefixtures("small_result")  # so that kernels are compiled before
 def test_a_signal_stops_at_once_and_the_same_command_goes_on(
     tmp_path: Path, number: signal.Signals, code: int
 ) -> None:
@@ -184,9 +185,8 @@ def test_a_signal_stops_at_once_and_the_same_command_goes_on(
         stderr=subprocess.PIPE,
         text=True,
     )
-    for _ in range(600):
-        if list(tmp_path.glob("long.nc.parts/batch-*.npz")):
-            break
+    while not list(tmp_path.glob("long.nc.parts/batch-*.npz")):
+        assert process.poll() is None
         time.sleep(0.1)
     asked = time.monotonic()
     process.send_signal(number)
