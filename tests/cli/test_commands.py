@@ -20,6 +20,7 @@ import pairmc
 from pairmc.cli.main import run
 from pairmc.results.load import load
 from tests.conftest import SMALL, same_data
+from tests.faults.harness import heed_interrupts
 
 PAIRMC = [sys.executable, "-m", "pairmc"]
 
@@ -184,14 +185,18 @@ def test_a_signal_stops_at_once_and_the_same_command_goes_on(
         cwd=tmp_path,
         stderr=subprocess.PIPE,
         text=True,
+        preexec_fn=heed_interrupts,
     )
     while not list(tmp_path.glob("long.nc.parts/batch-*.npz")):
         assert process.poll() is None
         time.sleep(0.1)
     asked = time.monotonic()
     process.send_signal(number)
-    _, message = process.communicate(timeout=30)
-    assert time.monotonic() - asked < 10
+    try:
+        _, message = process.communicate(timeout=60)
+    finally:
+        process.kill()
+    assert time.monotonic() - asked < 20
     assert process.returncode == code
     assert "To go on: pairmc sample long.toml" in message
     assert "Traceback" not in message

@@ -68,7 +68,7 @@ def test_a_mistake_in_the_run_file(folder: Path, kind: str) -> None:
     (folder / "run.toml").write_text(SMALL.replace(old, new))
     start = time.monotonic()
     outcome = pairmc(folder, "sample", "run.toml")
-    assert time.monotonic() - start < 10
+    assert time.monotonic() - start < 30  # under a second on an idle machine
     refused(outcome, "run.toml:", *texts)
     assert [path.name for path in folder.iterdir()] == ["run.toml"]
 

@@ -44,6 +44,11 @@ _DROP_FROM_BOUNDING_SET = 24
 _PASS_OVER_PERMISSIONS = (1, 2)
 
 
+def heed_interrupts() -> None:
+    """Make the program that is started next heed SIGINT, which a shell's background jobs ignore."""
+    signal.signal(signal.SIGINT, signal.SIG_DFL)
+
+
 def obey_permissions() -> None:
     """Make the program that is started next obey file permissions, also as root."""
     for capability in _PASS_OVER_PERMISSIONS if os.geteuid() == 0 else ():
@@ -170,7 +175,7 @@ def kill_at_random(
     """Send a signal at random moments, time after time; the run goes on in between."""
     endings = {signal.SIGKILL: -9, signal.SIGINT: 130, signal.SIGTERM: 143}
     for _ in range(cases):
-        process = campaign.start()
+        process = campaign.start(preexec_fn=heed_interrupts)
         # beyond the handler's installation for the signals that are handled
         time.sleep(rng.uniform(0.0 if number == signal.SIGKILL else 1.2, 1.1 * seconds))
         process.send_signal(number)
