@@ -185,7 +185,7 @@ def test_a_signal_stops_at_once_and_the_same_command_goes_on(
         cwd=tmp_path,
         stderr=subprocess.PIPE,
         text=True,
-        preexec_fn=heed_interrupts,
+        preexec_fn=heed_interrupts,  # noqa: PLW1509  no threads here
     )
     while not list(tmp_path.glob("long.nc.parts/batch-*.npz")):
         assert process.poll() is None
