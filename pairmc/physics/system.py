@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 from pairmc.physics.axes.periodic import Periodic
 from pairmc.physics.gas import Gas
-from pairmc.physics.occupation import GroundState
+from pairmc.physics.occupation.ground import GroundState
 from pairmc.physics.orbitals import enumerate_orbitals
 
 

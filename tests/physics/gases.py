@@ -13,7 +13,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pairmc.physics.gas import Gas
-from pairmc.physics.occupation import GroundState
+from pairmc.physics.occupation.ground import GroundState
 from pairmc.physics.sampling.direct import DirectSampler
 from pairmc.physics.snapshots import Snapshots
 from pairmc.physics.system import System, build_system

@@ -16,7 +16,7 @@ from scipy.stats import norm, ttest_1samp
 
 from pairmc.physics.grids import separation_grid
 from pairmc.physics.observables import pair_correlation
-from pairmc.physics.occupation import GroundState
+from pairmc.physics.occupation.ground import GroundState
 from pairmc.physics.snapshots import Snapshots
 from pairmc.physics.system import System
 from pairmc.physics.theory.pair_correlation import expected

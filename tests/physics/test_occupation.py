@@ -16,7 +16,7 @@ import pytest
 from scipy.stats import chisquare
 
 from pairmc.physics.axes.periodic import Periodic
-from pairmc.physics.occupation import GroundState
+from pairmc.physics.occupation.ground import GroundState
 from pairmc.physics.orbitals import enumerate_orbitals
 from tests.oracles import enumeration, pair_density
 

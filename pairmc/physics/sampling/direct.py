@@ -7,7 +7,7 @@ from collections.abc import Callable
 import numpy as np
 
 from pairmc.compiled import kernel
-from pairmc.physics.occupation import GroundState
+from pairmc.physics.occupation.ground import GroundState
 from pairmc.physics.sampling.chain import draw_positions
 from pairmc.physics.sampling.features import PlaneWaves, plane_waves
 from pairmc.physics.snapshots import Snapshots

@@ -11,7 +11,7 @@ from numpy.typing import NDArray
 from scipy import fft, special
 
 from pairmc.physics.grids import SeparationGrid, shell_volumes
-from pairmc.physics.occupation import GroundState
+from pairmc.physics.occupation.ground import GroundState
 from pairmc.physics.system import System
 
 # Wave numbers closer than this fraction are summed as one.
