@@ -90,12 +90,13 @@ def _closed_shells(run: RunFile) -> list[str]:
 
 def open_shell_messages(run: RunFile) -> list[str]:
     """Return a line for each component whose shell is open, with the numbers that close it."""
+    from pairmc.physics.occupation.ground import GroundState
     from pairmc.physics.orbitals import nearest_closed
 
     system = run.system()
     lines = []
     for name, occupation in zip(run.gas.components, system.occupations, strict=True):
-        if not occupation.closed:
+        if isinstance(occupation, GroundState) and not occupation.closed:
             near = " and ".join(map(str, nearest_closed(system.axes, occupation.population)))
             lines.append(
                 f"{name}: open shell, {occupation.valence} of {occupation.degeneracy} orbitals of "

@@ -48,7 +48,7 @@ def density_of_wigner_seitz_radius(dimension: int, radius: float) -> float:
 
 @dataclass(frozen=True)
 class Gas:
-    """A free Fermi gas of any number of spin components at zero temperature.
+    """A free Fermi gas of any number of spin components.
 
     Parameters
     ----------
@@ -62,6 +62,10 @@ class Gas:
         Of all components together, per length unit**dimension.
     units
         What lengths and energies are measured in.
+    thermal_energy
+        k_B T in units of ħ²/(m · length²).
+    ensemble
+        ``"canonical"``: populations are fixed; ``"grand-canonical"``: they are means.
     """
 
     dimension: int
@@ -69,6 +73,8 @@ class Gas:
     populations: tuple[int, ...]
     total_density: float
     units: Units = field(default_factory=Units)
+    thermal_energy: float = 0.0
+    ensemble: str = "canonical"
 
     @property
     def particles(self) -> int:
@@ -110,6 +116,26 @@ class Gas:
         if energies is None or joules is None:
             return None
         return tuple(energy * joules / BOLTZMANN for energy in energies)
+
+    @property
+    def reduced_temperature(self) -> float:
+        """T/T_F of the majority component."""
+        return self.thermal_energy / (0.5 * self.fermi_wavenumbers[self.majority] ** 2)
+
+    @property
+    def temperature(self) -> float | None:
+        """T in kelvin; 0 at zero temperature, None where energies have no SI value."""
+        kinetic, joules = self.units.kinetic, self.units.joules
+        if self.thermal_energy == 0:
+            return 0.0
+        if kinetic is None or joules is None:
+            return None
+        return self.thermal_energy * kinetic * joules / BOLTZMANN
+
+    @property
+    def thermal_wavelength(self) -> float | None:
+        """λ_T = (2πħ²/(m k_B T))^{1/2}, length units; None at zero temperature."""
+        return (2 * pi / self.thermal_energy) ** 0.5 if self.thermal_energy else None
 
     @property
     def wigner_seitz_radius(self) -> float:

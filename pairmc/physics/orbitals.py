@@ -72,6 +72,19 @@ def enumerate_orbitals(axes: Sequence[Periodic], count: int) -> Orbitals:
         cutoff *= 1.3
 
 
+def enumerate_below(axes: Sequence[Periodic], energy: float) -> Orbitals:
+    """Return all levels up to an energy.
+
+    Parameters
+    ----------
+    axes
+        One axis per dimension.
+    energy
+        In units of ħ²/(m · length²).
+    """
+    return _by_level(*_below(axes, energy * (1 + 2 * DEGENERACY_TOLERANCE)))
+
+
 def _below(
     axes: Sequence[Periodic], cutoff: float
 ) -> tuple[NDArray[np.int64], NDArray[np.float64]]:

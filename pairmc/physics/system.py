@@ -3,11 +3,18 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
+from typing import TYPE_CHECKING, TypeAlias, Union
 
 from pairmc.physics.axes.periodic import Periodic
 from pairmc.physics.gas import Gas
 from pairmc.physics.occupation.ground import GroundState
 from pairmc.physics.orbitals import enumerate_orbitals
+
+if TYPE_CHECKING:
+    from pairmc.physics.occupation.canonical import Canonical
+    from pairmc.physics.occupation.grand_canonical import GrandCanonical
+
+Occupation: TypeAlias = Union[GroundState, "Canonical", "GrandCanonical"]
 
 
 @dataclass(frozen=True, eq=False)
@@ -27,7 +34,7 @@ class System:
 
     gas: Gas
     axes: tuple[Periodic, ...]
-    occupations: tuple[GroundState, ...]
+    occupations: tuple[Occupation, ...]
 
     @property
     def sides(self) -> tuple[float, ...]:
@@ -46,11 +53,26 @@ def build_system(gas: Gas, sides_ratio: tuple[float, ...]) -> System:
         One positive number per dimension.
     """
     axes = tuple(Periodic(side) for side in gas.box(sides_ratio))
-    occupations = tuple(
-        GroundState(enumerate_orbitals(axes, population), population)
-        for population in gas.populations
+    return System(
+        gas, axes, tuple(_occupation(gas, axes, population) for population in gas.populations)
     )
-    return System(gas, axes, occupations)
+
+
+def _occupation(gas: Gas, axes: tuple[Periodic, ...], population: int) -> Occupation:
+    """Return how one component fills its orbitals."""
+    T = gas.thermal_energy
+    if T == 0:
+        # numbers that fluctuate do not, at T = 0 in a closed shell; others are refused before
+        return GroundState(enumerate_orbitals(axes, population), population)
+    # scipy is imported only for a warm gas
+    from pairmc.physics.occupation.canonical import Canonical
+    from pairmc.physics.occupation.cutoff import warm_orbitals
+    from pairmc.physics.occupation.grand_canonical import GrandCanonical
+
+    orbitals = warm_orbitals(axes, population, T)
+    if gas.ensemble == "grand-canonical":
+        return GrandCanonical(orbitals, population, T)
+    return Canonical(orbitals, population, T)
 
 
 def pair_labels(components: tuple[str, ...]) -> tuple[tuple[str, int, int], ...]:

@@ -48,6 +48,8 @@ class Collected:
     ----------
     tallies
         Of each observable.
+    populations
+        Particles of each component in all snapshots of a batch, batch by batch.
     made
         Versions and processors that drew them, each set once.
     history
@@ -55,6 +57,7 @@ class Collected:
     """
 
     tallies: dict[str, Tallies] = field(default_factory=dict)
+    populations: list[NDArray[np.int64]] = field(default_factory=list)
     made: list[dict[str, str]] = field(default_factory=list)
     history: str = ""
 
@@ -75,6 +78,7 @@ class Collected:
             mine.counts.append(arrays[f"{name}.count"])
             mine.moment_sum = mine.moment_sum + arrays[f"{name}.moment_sum"]
             mine.moment_product = mine.moment_product + arrays[f"{name}.moment_product"]
+        self.populations.append(arrays["population_sum"])
         self._note(made)
 
     def add_result(self, names: Sequence[str], result: xr.Dataset) -> None:
@@ -93,6 +97,8 @@ class Collected:
             mine.counts.extend(result[registry.observable(name).COUNT_NAME].values)
             mine.moment_sum = mine.moment_sum + result[f"{name}_moment_sum"].values
             mine.moment_product = mine.moment_product + result[f"{name}_moment_product"].values
+        sums = result["mean_population"].values * result["snapshot_count"].values[:, None]
+        self.populations.extend(np.rint(sums).astype(np.int64))
         for made in json.loads(result.attrs["made_with"]):
             self._note(made)
 

@@ -53,6 +53,11 @@ def build_dataset(run: RunFile, collected: Collected) -> xr.Dataset:
         ),
         "spin": (("spin",), component_labels(run.gas), {"long_name": "spin component"}),
     }
+    variables["mean_population"] = (
+        ("batch", "spin"),
+        np.stack(collected.populations) / run.batch_size,
+        {"units": "1", "long_name": "particles of the component, mean over the batch"},
+    )
     variables |= scale_variables(run)
     for name in run.observables:
         more, where = _observable(run, name, collected)
@@ -78,7 +83,7 @@ def attributes(run: RunFile, collected: Collected) -> dict[str, Any]:
         "seed": str(run.seed),
         "made_with": json.dumps(collected.made, sort_keys=True),
         "normalisation": schema.NORMALISATION,
-        "ensemble": schema.ENSEMBLES["canonical"],
+        "ensemble": schema.ensemble_words(run.gas.ensemble, run.gas.thermal_energy > 0),
     }
 
 

@@ -10,6 +10,7 @@ import numpy as np
 import xarray as xr
 
 from pairmc.errors import PairmcError
+from pairmc.physics.snapshots import Snapshots, widened
 from pairmc.results.collect import Collected
 from pairmc.results.dataset import build_dataset
 from pairmc.results.load import load
@@ -54,7 +55,7 @@ def fold(run: RunFile, path: Path, parts: Parts, stored: int, warn: Callable[[st
         def check(written: Path) -> None:
             _compare(written, dataset, kept())
 
-        write_result(path, dataset, run, kept(), check)
+        write_result(path, dataset, run, kept, check)
     except DamagedPartError as error:
         raise PairmcError(
             f"a part was damaged while it was folded ({error}); the same command draws it again"
@@ -90,10 +91,12 @@ def _compare(path: Path, dataset: xr.Dataset, blocks: Iterator[Block]) -> None:
     with netCDF4.Dataset(path) as file:
         file.set_auto_mask(False)
         start = 0
-        for _, position, component in blocks:
+        for _, where, which in blocks:
+            width = len(file.dimensions["particle"])
+            position, component = widened(Snapshots(where, which), width)
             rows = slice(start, start + len(position))
             if not (
-                np.array_equal(file["position"][rows], position)
+                np.array_equal(file["position"][rows], position, equal_nan=True)
                 and np.array_equal(file["component"][rows], component)
             ):
                 raise PairmcError("snapshots were not read back from the disk as they were written")

@@ -7,7 +7,8 @@ from typing import Any
 import numpy as np
 from numpy.typing import NDArray
 
-from pairmc.physics.gas import Gas
+from pairmc.physics import thermal
+from pairmc.physics.gas import Gas, fermi_wavenumber
 from pairmc.runfile.run import RunFile
 from pairmc.units import HARTREE
 
@@ -74,6 +75,7 @@ def scale_variables(run: RunFile) -> Variables:
     if temperatures is not None:
         about = {"units": "K", "long_name": "Fermi temperature of the component"}
         variables["fermi_temperature"] = (spin, np.array(temperatures), about)
+    variables |= _warm_variables(run)
     if gas.polarisation is not None:
         variables["polarisation"] = (
             (),
@@ -81,3 +83,65 @@ def scale_variables(run: RunFile) -> Variables:
             {"units": "1", "long_name": "spin polarisation, |N_1 - N_2| / (N_1 + N_2)"},
         )
     return variables
+
+
+def _warm_variables(run: RunFile) -> Variables:
+    """Return temperature, chemical potential and energies: of this system and of the infinite one.
+
+    Chemical potentials of fixed populations are those of the infinite system.
+    """
+    gas, T = run.gas, run.gas.thermal_energy
+    scale = 1.0 if gas.units.kinetic is None else gas.units.kinetic
+    about = {"units": energy_unit(gas)}
+    if gas.units.kinetic is None:
+        about = {"units": gas.units.udunits(-2), "comment": "times hbar^2 / mass is the energy"}
+    means = [occupation.mean() for occupation in run.system().occupations]
+    levels = [occupation.orbitals.energies for occupation in run.system().occupations]
+    energies = [
+        float(mean @ level) / population
+        for mean, level, population in zip(means, levels, gas.populations, strict=True)
+    ]
+    spin = ("spin",)
+    variables: Variables = {
+        "reduced_temperature": (
+            (),
+            gas.reduced_temperature,
+            {"units": "1", "long_name": "temperature in T_F of the majority component"},
+        ),
+        "energy_per_particle": (
+            spin,
+            scale * np.array(energies),
+            about | {"long_name": "kinetic energy per particle, exact for this finite system"},
+        ),
+        "energy_per_particle_bulk": (
+            spin,
+            scale * np.array([_bulk_energy(gas, density) for density in gas.densities]),
+            about | {"long_name": "kinetic energy per particle of the infinite system"},
+        ),
+    }
+    if T == 0:
+        return variables
+    potentials = [thermal.chemical_potential(gas.dimension, n, T) for n in gas.densities]
+    limits = [thermal.long_wavelength_structure_factor(gas.dimension, n, T) for n in gas.densities]
+    variables["chemical_potential_bulk"] = (
+        spin,
+        scale * np.array(potentials),
+        about | {"long_name": "chemical potential of the infinite system"},
+    )
+    variables["structure_factor_limit_bulk"] = (
+        spin,
+        np.array(limits),
+        {"units": "1", "long_name": "S(q -> 0) of the component in the infinite system"},
+    )
+    if gas.temperature is not None:
+        about = {"units": "K", "long_name": "temperature"}
+        variables["temperature"] = ((), gas.temperature, about)
+    return variables
+
+
+def _bulk_energy(gas: Gas, density: float) -> float:
+    """Return the energy per particle of the infinite system, in ħ²/(m · length²)."""
+    if gas.thermal_energy > 0:
+        return thermal.energy_per_particle(gas.dimension, density, gas.thermal_energy)
+    d = gas.dimension
+    return d / (d + 2) * 0.5 * fermi_wavenumber(d, density) ** 2

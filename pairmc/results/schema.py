@@ -11,19 +11,23 @@ CONVENTIONS = "CF-1.11"
 # Marks the variables that hold the kept snapshots; they are written part by part.
 KEPT = ("position", "component", "particle_count", "snapshot_batch")
 
-# Filled in where a snapshot holds fewer particles than the longest one.
-NO_COMPONENT = -1
-
 NORMALISATION = (
     "pair correlations are normalised by the densities of the run: "
     "g = (pairs in the bin)/(snapshots * ideal pairs), ideal = n_s^2 V dv / 2 for like components "
     "and n_s n_s' V dv for unlike ones, dv the volume of the shell; not by the number of pairs"
 )
 
-ENSEMBLES = {
-    "canonical": "canonical: fixed populations; zero temperature; a partly filled last level is an "
-    "equal mixture of its fillings"
-}
+
+def ensemble_words(ensemble: str, warm: bool) -> str:
+    """Return the ensemble in words."""
+    if not warm:
+        return (
+            f"{ensemble}: fixed populations; zero temperature; a partly filled last level is an "
+            "equal mixture of its fillings"
+        )
+    if ensemble == "canonical":
+        return "canonical: fixed populations at a temperature"
+    return "grand canonical: populations fluctuate about their means, at a temperature"
 
 
 def schema_text() -> str:

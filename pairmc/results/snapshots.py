@@ -8,6 +8,7 @@ import numpy as np
 import xarray as xr
 
 from pairmc.errors import InputError, Problem
+from pairmc.physics.snapshots import joined
 from pairmc.results.scales import component_labels
 from pairmc.runfile.read import read_run_file
 from pairmc.runfile.run import RunFile
@@ -35,7 +36,8 @@ def draw_snapshots(
     -------
     xarray.Dataset
         ``position`` (snapshot, particle, axis), float64 in length units, from 0 to the side;
-        ``component`` (snapshot, particle), int8, an index into ``spin``; ``side`` (axis).
+        ``component`` (snapshot, particle), int8, an index into ``spin``; ``side`` (axis). Where
+        numbers fluctuate, places without a particle hold NaN and −1.
 
     Raises
     ------
@@ -52,8 +54,8 @@ def draw_snapshots(
         wanted = min(known.batch_size, int(count) - batch * known.batch_size)
         batches.append(make_sampler(known, batch).draw(wanted))
     sides = np.array(known.system().sides)
-    position = np.concatenate([part.position for part in batches]) * sides
-    component = np.concatenate([part.component for part in batches])
+    together = joined(batches, known.gas.particles, known.gas.dimension)
+    position, component = together.position * sides, together.component
     unit = known.gas.units.udunits(1)
     return xr.Dataset(
         {

@@ -13,7 +13,7 @@ import xarray as xr
 from numpy.typing import NDArray
 
 from pairmc.files import write_whole
-from pairmc.results import schema
+from pairmc.physics.snapshots import NO_COMPONENT, Snapshots, widened
 from pairmc.runfile.run import RunFile
 from pairmc.running.batch import kept_in_batch
 from pairmc.running.parts import Parts
@@ -60,7 +60,7 @@ def write_result(
     path: Path,
     dataset: xr.Dataset,
     run: RunFile,
-    blocks: Iterator[Block],
+    blocks: Callable[[], Iterator[Block]],
     check: Callable[[Path], None],
 ) -> None:
     """Write a result file under a temporary name and put it in place when it has been checked.
@@ -74,8 +74,8 @@ def write_result(
     run
         The run.
     blocks
-        The kept snapshots, batch by batch; one batch is in memory at a time. They may come from
-        the file that is about to be replaced.
+        Gives the kept snapshots, batch by batch; one batch is in memory at a time. They may come
+        from the file that is about to be replaced.
 
     check
         Reads the finished file back before it gets its name.
@@ -100,7 +100,8 @@ def write_result(
             for name, edges in bounds.items():
                 file[name].setncattr("bounds", edges)
             if kept:
-                _append_kept(file, run, kept, blocks)
+                widest = max(component.shape[1] for _, _, component in blocks())
+                _append_kept(file, run, kept, widest, blocks())
 
     write_whole(path, write, check)
 
@@ -137,9 +138,11 @@ def encoding(dataset: xr.Dataset) -> dict[Any, dict[str, Any]]:
     return chosen
 
 
-def _append_kept(file: netCDF4.Dataset, run: RunFile, kept: int, blocks: Iterator[Block]) -> None:
+def _append_kept(
+    file: netCDF4.Dataset, run: RunFile, kept: int, particles: int, blocks: Iterator[Block]
+) -> None:
     """Add the variables of the kept snapshots, a batch at a time."""
-    particles, dimension = run.gas.particles, run.gas.dimension
+    dimension = run.gas.dimension
     file.createDimension("snapshot", kept)
     file.createDimension("particle", particles)
     rows = max(1, min(kept, _CHUNK_BYTES // (4 * particles * dimension)))
@@ -165,7 +168,7 @@ def _append_kept(file: netCDF4.Dataset, run: RunFile, kept: int, blocks: Iterato
         "i1",
         along,
         long_name="spin component of the particle",
-        flag_values=np.array([schema.NO_COMPONENT, *range(len(run.gas.components))], dtype=np.int8),
+        flag_values=np.array([NO_COMPONENT, *range(len(run.gas.components))], dtype=np.int8),
         flag_meanings=" ".join(["padding", *run.gas.components]),
     )
     count = create("particle_count", "i4", ("snapshot",), units="1", long_name="particles")
@@ -173,10 +176,11 @@ def _append_kept(file: netCDF4.Dataset, run: RunFile, kept: int, blocks: Iterato
         "snapshot_batch", "i8", ("snapshot",), units="1", long_name="batch of the snapshot"
     )
     start = 0
-    for batch, where, which in blocks:
+    for batch, narrow_where, narrow_which in blocks:
+        where, which = widened(Snapshots(narrow_where, narrow_which), particles)
         rows_here = slice(start, start + len(where))
         position[rows_here] = where
         component[rows_here] = which
-        count[rows_here] = np.count_nonzero(which != schema.NO_COMPONENT, axis=1)
+        count[rows_here] = np.count_nonzero(which != NO_COMPONENT, axis=1)
         batches[rows_here] = batch
         start += len(where)

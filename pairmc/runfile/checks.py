@@ -6,6 +6,7 @@ from bisect import bisect_left
 from collections.abc import Iterator
 from math import isqrt
 
+from pairmc.physics.orbitals import nearest_closed
 from pairmc.runfile.lines import Path
 from pairmc.runfile.models import (
     LARGEST_BATCHES,
@@ -16,7 +17,14 @@ from pairmc.runfile.models import (
     SamplingTable,
 )
 from pairmc.runfile.problems import Finding, Refusal
-from pairmc.runfile.scale import check_scale
+from pairmc.runfile.run import RunFile
+from pairmc.runfile.scale import check_scale, check_temperature
+
+# Temperatures in T_F of the majority between which sums over orbitals are tested.
+COLDEST, HOTTEST = 1e-3, 100.0
+
+# Particles times orbitals of one component: the table that filled orbitals are drawn from.
+LARGEST_TABLE = 1e8
 
 
 def check(document: Document, refused: set[Path]) -> Iterator[Finding]:
@@ -33,12 +41,73 @@ def check(document: Document, refused: set[Path]) -> Iterator[Finding]:
         in_gas = {str(path[1]) for path in refused if path[0] == "gas"}
         yield from _check_required(document.gas, in_gas)
         yield from check_scale(document.gas, in_gas)
+        yield from check_temperature(document.gas, in_gas)
     yield from _check_axes(document)
     if not {("sampling", "snapshots"), ("sampling", "batches")} & refused:
         yield from _check_batches(document.sampling)
     observables = document.observables
     if observables is not None and not any(path[0] == "observables" for path in refused):
         yield from _check_observables(observables.pair_correlation is not None)
+
+
+def check_run(run: RunFile) -> Iterator[Finding]:
+    """Yield what shows only once the gas is in its box: ranges of temperature, open shells.
+
+    Parameters
+    ----------
+    run
+        A run whose tables have passed all checks.
+    """
+    if run.gas.thermal_energy > 0:
+        yield from _check_warm(run)
+    elif run.gas.ensemble == "grand-canonical":
+        yield from _check_cold_grand_canonical(run)
+
+
+def _check_warm(run: RunFile) -> Iterator[Finding]:
+    gas, ratio = run.gas, run.gas.reduced_temperature
+    if not COLDEST * (1 - 1e-9) <= ratio <= HOTTEST * (1 + 1e-9):
+        yield Finding(
+            ("gas", "temperature"),
+            Refusal(
+                f"{ratio:.3g} T_F of the majority component",
+                f"0, or from {COLDEST:g} T_F to {HOTTEST:g} T_F",
+                "a colder gas is in its ground state, a hotter one is classical",
+            ),
+        )
+        return
+    from pairmc.physics.axes.periodic import Periodic
+    from pairmc.physics.occupation.cutoff import orbital_bound
+
+    axes = tuple(Periodic(side) for side in gas.box(run.sides))
+    for name, population in zip(gas.components, gas.populations, strict=True):
+        orbitals = orbital_bound(axes, population, gas.thermal_energy)
+        if orbitals * population > LARGEST_TABLE:
+            yield Finding(
+                ("gas", "particles", name),
+                Refusal(
+                    f"{population} particles that need about {orbitals:.2g} orbitals at "
+                    f"{ratio:.3g} T_F",
+                    f"particles times orbitals up to {LARGEST_TABLE:g}",
+                    "fewer particles or a lower temperature",
+                ),
+            )
+
+
+def _check_cold_grand_canonical(run: RunFile) -> Iterator[Finding]:
+    system = run.system()
+    for name, occupation in zip(run.gas.components, system.occupations, strict=True):
+        if not occupation.closed:
+            near = " or ".join(map(str, nearest_closed(system.axes, occupation.population)))
+            yield Finding(
+                ("gas", "particles", name),
+                Refusal(
+                    f"an open shell of {occupation.population} at temperature 0 with "
+                    'ensemble = "grand-canonical"',
+                    f"a closed shell there, such as {near}",
+                    'close the shell, set a temperature, or set ensemble = "canonical"',
+                ),
+            )
 
 
 def _check_required(gas: GasTable, refused: set[str]) -> Iterator[Finding]:

@@ -46,8 +46,8 @@ def canonical(run: RunFile) -> dict[str, Any]:
             "total_density": _digits(density),
             "density_unit": "1" if metres is None else f"m^-{gas.dimension}",
             "mass": None if run.mass_kilogram is None else _digits(run.mass_kilogram),
-            "temperature": "0",
-            "ensemble": "canonical",
+            "temperature": _digits(gas.reduced_temperature) if gas.thermal_energy else "0",
+            "ensemble": gas.ensemble,
         },
         "spin": {"rotation": "0"},
         "confinement": {

@@ -31,7 +31,9 @@ _AXES = ("periodic", "hard-wall", "harmonic", "lattice")
 PLAIN: Kind = ()
 MASS: Kind = (("mass", 1),)
 ANGLE: Kind = (("angle", 1),)
-TEMPERATURES: tuple[Kind, ...] = ((("fermi_temperature", 1),), (("temperature", 1),))
+FERMI_TEMPERATURE: Kind = (("fermi_temperature", 1),)
+TEMPERATURE: Kind = (("temperature", 1),)
+ENERGY: Kind = (("energy", 1),)
 
 
 def length_power(power: int) -> Kind:
@@ -65,16 +67,18 @@ def integer(least: int, most: int, reason: str = "", allowed: str = "") -> Calla
     return read
 
 
-def choice(served: str, later: Mapping[str, str]) -> Callable[[Any], str]:
+def choice(served: str | tuple[str, ...], later: Mapping[str, str]) -> Callable[[Any], str]:
     """Return a reader of one word; `later` holds the words not yet served, with advice."""
+    words = (served,) if isinstance(served, str) else served
+    allowed = " or ".join(f'"{word}"' for word in words)
 
     def read(value: Any) -> str:
-        if value == served:
-            return served
+        if isinstance(value, str) and value in words:
+            return value
         if isinstance(value, str) and value in later:
-            raise not_yet(value, f'"{served}"', later[value])
-        close = did_you_mean(value, (served, *later)) if isinstance(value, str) else ""
-        raise refuse(value, f'"{served}"', close)
+            raise not_yet(value, allowed, later[value])
+        close = did_you_mean(value, (*words, *later)) if isinstance(value, str) else ""
+        raise refuse(value, allowed, close)
 
     return read
 
@@ -156,14 +160,13 @@ def scale(*kinds: Kind, allowed: str, length: str = "") -> Callable[[Any], Quant
 
 
 def temperature(value: Any) -> Quantity:
-    """Read the temperature, which must be zero."""
-    allowed = '0, "0 T_F" or "0 nK"'
-    quantity = _quantity(value, (PLAIN, *TEMPERATURES), allowed)
+    """Read the temperature: a multiple of T_F, kelvin, or an energy k_B T; a plain 0."""
+    allowed = '0, or a temperature with its unit, such as "0.2 T_F", "40 nK" or "0.01 hartree"'
+    quantity = _quantity(value, (PLAIN, FERMI_TEMPERATURE, TEMPERATURE, ENERGY), allowed)
     if quantity.number < 0:
         raise refuse(value, allowed, "temperatures are absolute")
-    if quantity.number > 0:
-        advice = "set temperature = 0 for the ground state"
-        raise not_yet(value, allowed, advice, "a positive temperature")
+    if quantity.number > 0 and quantity.plain:
+        raise refuse(value, allowed, f'write "{value} T_F" for a multiple of the majority\'s T_F')
     return quantity
 
 

@@ -61,9 +61,7 @@ class GasTable(_Table):
     mass: Annotated[Quantity | None, PlainValidator(_MASS)] = None
     ensemble: Annotated[
         str,
-        PlainValidator(
-            choice("canonical", {"grand-canonical": 'set ensemble = "canonical": fixed numbers'})
-        ),
+        PlainValidator(choice(("canonical", "grand-canonical"), {})),
     ] = "canonical"
 
 

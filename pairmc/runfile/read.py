@@ -8,9 +8,9 @@ import tomllib
 from typing import Any
 
 from pairmc.errors import InputError, Problem
-from pairmc.runfile.checks import check
+from pairmc.runfile.checks import check, check_run
 from pairmc.runfile.lines import Path, key_lines
-from pairmc.runfile.problems import value_in_words
+from pairmc.runfile.problems import Finding, value_in_words
 from pairmc.runfile.run import RunFile, build_run
 from pairmc.runfile.validate import validate
 
@@ -74,11 +74,18 @@ def read_run_text(text: str, path: str = "run file") -> RunFile:
     document, findings = validate(content)
     refused = {part for finding in findings for part in (finding.path, finding.meant) if part}
     findings += check(document, refused)
+    _refuse(findings, lines, path)
+    run = build_run(document, path, text)
+    _refuse(list(check_run(run)), lines, path)
+    return run
+
+
+def _refuse(findings: list[Finding], lines: dict[Path, int], path: str) -> None:
+    """Refuse all that was found at once, in the order of the file; nothing where it is nothing."""
     if findings:
         problems = [finding.problem(lines) for finding in findings]
         problems.sort(key=lambda problem: (problem.line is None, problem.line or 0))
         raise InputError(tuple(problems), path)
-    return build_run(document, path, text)
 
 
 def _parse(text: str, path: str) -> tuple[dict[str, Any], dict[Path, int]]:

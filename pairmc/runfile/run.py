@@ -13,7 +13,7 @@ from pairmc.physics.observables.pair_correlation_settings import Settings as Pai
 from pairmc.physics.system import System, build_system
 from pairmc.runfile.models import SEED_LIMIT, Document
 from pairmc.runfile.problems import value_in_words
-from pairmc.runfile.scale import settle_scale
+from pairmc.runfile.scale import settle_gas, settle_scale
 from pairmc.units import ATOMIC_MASS, ELECTRON_MASS
 
 
@@ -97,7 +97,7 @@ class RunFile:
         -------
         dict
             ``total_density``, ``r_s``, ``fermi_wavenumber`` (of the majority component),
-            ``temperature`` and, where known, ``mass``.
+            ``temperature`` in T_F of the majority and, where known, in kelvin, and ``mass``.
         """
         gas = self.gas
         echo = {
@@ -106,7 +106,7 @@ class RunFile:
             "fermi_wavenumber": _with_unit(
                 gas.fermi_wavenumbers[gas.majority], gas.units.length, -1
             ),
-            "temperature": "0",
+            "temperature": _temperature(gas),
         }
         if self.mass_kilogram is not None:
             electrons = gas.units.length == "bohr"
@@ -126,14 +126,7 @@ def build_run(document: Document, path: str, text: str) -> RunFile:
         Where they were read, and what was read.
     """
     scale = settle_scale(document.gas)
-    particles = document.gas.particles or {}
-    gas = Gas(
-        dimension=document.gas.dimension or 0,
-        components=tuple(particles),
-        populations=tuple(particles.values()),
-        total_density=scale.total_density,
-        units=scale.units,
-    )
+    gas = settle_gas(document.gas)
     observables = document.observables
     pair_correlation = None if observables is None else observables.pair_correlation
     bins = PairCorrelationSettings().bins if pair_correlation is None else pair_correlation.bins
@@ -152,6 +145,14 @@ def build_run(document: Document, path: str, text: str) -> RunFile:
         observables={"pair_correlation": PairCorrelationSettings(bins)},
         mass_kilogram=scale.mass_kilogram,
     )
+
+
+def _temperature(gas: Gas) -> str:
+    """Return the temperature in T_F of the majority and, where known, in kelvin."""
+    if gas.thermal_energy == 0:
+        return "0"
+    text = f"{gas.reduced_temperature:.9g} T_F"
+    return text if gas.temperature is None else f"{text} = {gas.temperature:.9g} K"
 
 
 @lru_cache(maxsize=8)

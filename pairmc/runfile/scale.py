@@ -3,13 +3,27 @@
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 from typing import NamedTuple
 
-from pairmc.physics.gas import density_of_fermi_wavenumber, density_of_wigner_seitz_radius
-from pairmc.runfile.fields import length_power
+from pairmc.physics.gas import (
+    Gas,
+    density_of_fermi_wavenumber,
+    density_of_wigner_seitz_radius,
+)
+from pairmc.runfile.fields import FERMI_TEMPERATURE, TEMPERATURE, length_power
 from pairmc.runfile.models import GasTable
 from pairmc.runfile.problems import Finding, Refusal, value_in_words
-from pairmc.units import ELECTRON_MASS, HARTREE, HBAR, METRES, Quantity, Units, kind_in_words
+from pairmc.units import (
+    BOLTZMANN,
+    ELECTRON_MASS,
+    HARTREE,
+    HBAR,
+    METRES,
+    Quantity,
+    Units,
+    kind_in_words,
+)
 
 _KEYS = ("total_density", "r_s", "fermi_wavenumber")
 
@@ -54,6 +68,31 @@ def check_scale(gas: GasTable, refused: set[str]) -> Iterator[Finding]:
         )
 
 
+def check_temperature(gas: GasTable, refused: set[str]) -> Iterator[Finding]:
+    """Yield what does not fit together about temperature, ensemble and mass.
+
+    Parameters
+    ----------
+    gas
+        The table, each value read on its own.
+    refused
+        Keys of the table that were given and refused, about which nothing is concluded.
+    """
+    given = gas.temperature
+    if given.number > 0 and given.kind != FERMI_TEMPERATURE and not refused & {"mass", *_KEYS}:
+        scale = next((q for q in (gas.total_density, gas.fermi_wavenumber) if q is not None), None)
+        electrons = gas.r_s is not None or (scale is not None and scale.length == "bohr")
+        if not electrons and (gas.mass is None or scale is None or scale.plain):
+            yield Finding(
+                ("gas", "temperature"),
+                Refusal(
+                    value_in_words(given.written),
+                    "kelvin or an energy only where density has a unit and the mass is given",
+                    'give both, or write a multiple of T_F, such as "0.2 T_F"',
+                ),
+            )
+
+
 def _check_power(density: Quantity, dimension: int) -> Iterator[Finding]:
     """Yield the complaint about a density whose power of length is not the dimension."""
     if density.kind == length_power(-dimension):
@@ -93,6 +132,33 @@ def settle_scale(gas: GasTable) -> Scale:
     if given.plain:
         return Scale(Units(), density, None)
     return _scale(given.length, density, gas.mass)
+
+
+def settle_gas(table: GasTable) -> Gas:
+    """Return the gas of a table that has passed all checks.
+
+    k_B T in units of ħ²/(m · length²) is T/T_F · k_F²/2 with k_F of the majority component, or
+    k_B T divided by ħ²/m.
+    """
+    scale = settle_scale(table)
+    particles = table.particles or {}
+    gas = Gas(
+        dimension=table.dimension or 0,
+        components=tuple(particles),
+        populations=tuple(particles.values()),
+        total_density=scale.total_density,
+        units=scale.units,
+        ensemble=table.ensemble,
+    )
+    given = table.temperature
+    if given.number == 0:
+        return gas
+    if given.kind == FERMI_TEMPERATURE:
+        thermal = 0.5 * given.number * gas.fermi_wavenumbers[gas.majority] ** 2
+    else:
+        joules = given.value * (BOLTZMANN if given.kind == TEMPERATURE else 1.0)
+        thermal = joules / ((scale.units.kinetic or 0.0) * (scale.units.joules or 1.0))
+    return replace(gas, thermal_energy=thermal)
 
 
 def _scale(length: str, density: float, given: Quantity | None) -> Scale:

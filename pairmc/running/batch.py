@@ -14,7 +14,7 @@ from threadpoolctl import threadpool_limits
 from pairmc.errors import PairmcError
 from pairmc.physics.observables import registry
 from pairmc.physics.sampling.direct import DirectSampler
-from pairmc.physics.snapshots import Snapshots
+from pairmc.physics.snapshots import Snapshots, joined
 from pairmc.physics.system import System
 from pairmc.runfile.digest import digest
 from pairmc.runfile.run import RunFile
@@ -84,7 +84,8 @@ def run_batch(run: RunFile, batch: int, stop: Callable[[], bool] = lambda: False
     Returns
     -------
     dict of arrays
-        ``OBSERVABLE.TALLY`` for every tally, ``kept.position`` (snapshot, particle, axis) as
+        ``OBSERVABLE.TALLY`` for every tally, ``population_sum`` (component) the particles of all
+        snapshots together, ``kept.position`` (snapshot, particle, axis) as
         fractions of the sides, float32 in [0, 1), and ``kept.component`` (snapshot, particle).
 
     Raises
@@ -97,6 +98,7 @@ def run_batch(run: RunFile, batch: int, stop: Callable[[], bool] = lambda: False
     modules = {name: registry.observable(name) for name in run.observables}
     grids = {name: modules[name].grid(run.observables[name], system) for name in modules}
     tallies = {name: modules[name].empty(grids[name]) for name in modules}
+    populations = np.zeros(len(run.gas.components), dtype=np.int64)
     keep = kept_in_batch(run, batch)
     kept: list[Snapshots] = []
     done = 0
@@ -107,25 +109,19 @@ def run_batch(run: RunFile, batch: int, stop: Callable[[], bool] = lambda: False
         snapshots = sampler.draw(count)
         for name, module in modules.items():
             module.tally(snapshots, grids[name], tallies[name])
+        for label in range(len(populations)):
+            populations[label] += np.count_nonzero(snapshots.component == label)
         if done < keep:
             wanted = slice(keep - done)
             kept.append(Snapshots(snapshots.position[wanted], snapshots.component[wanted]))
         done += count
     arrays = {f"{name}.{key}": part for name in tallies for key, part in tallies[name].items()}
-    return arrays | _stack(kept, system)
+    return arrays | {"population_sum": populations} | _stack(kept, system)
 
 
 def _stack(kept: list[Snapshots], system: System) -> Arrays:
     """Return the kept snapshots of a batch as two arrays."""
-    gas = system.gas
-    if not kept:
-        return {
-            "kept.position": np.empty((0, gas.particles, gas.dimension), dtype=np.float32),
-            "kept.component": np.empty((0, gas.particles), dtype=np.int8),
-        }
-    position = np.concatenate([part.position for part in kept]).astype(np.float32)
+    together = joined(kept, system.gas.particles, system.gas.dimension)
+    position = together.position.astype(np.float32)
     position[position >= 1.0] = 0.0  # rounded up to the other face of the box
-    return {
-        "kept.position": position,
-        "kept.component": np.concatenate([part.component for part in kept]),
-    }
+    return {"kept.position": position, "kept.component": together.component}

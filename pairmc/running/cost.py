@@ -13,6 +13,7 @@ from pairmc.runfile.run import RunFile
 _REAL = (9e-11, 2.5e-9, 2.2e-6)
 _COMPLEX = (3.1e-10, 4e-9, 2.2e-6)
 _SECONDS_PER_PAIR = 5e-9
+_SECONDS_PER_ORBITAL = 1e-8  # a warm gas decides for each whether it is filled
 
 # Compiling the kernels the first time; kept in a cache afterwards.
 FIRST_COMPILATION = 25.0
@@ -57,11 +58,15 @@ def estimate(run: RunFile) -> Cost:
     particles = run.gas.particles
     seconds = 0.5 * particles * particles * _SECONDS_PER_PAIR
     largest = 0.0
+    tables = 0.0
     for occupation in run.system().occupations:
-        N = occupation.population
+        N, orbitals = occupation.population, len(occupation.orbitals.level)
         a, b, c = _REAL if occupation.closed else _COMPLEX
         seconds += a * N**3 + b * N * N * log(N + 1) + c * N
         largest = max(largest, (8 if occupation.closed else 16) * 2.5 * N * N)
+        if run.gas.thermal_energy > 0:
+            seconds += _SECONDS_PER_ORBITAL * orbitals
+            tables += 8.0 * orbitals * (N + 1)
     kept = run.snapshots if run.keep_snapshots is None else min(run.keep_snapshots, run.snapshots)
     per_snapshot = particles * (4.0 * run.gas.dimension + 1.0)
     pairs = len(run.gas.components) * (len(run.gas.components) + 1) // 2
@@ -70,7 +75,7 @@ def estimate(run: RunFile) -> Cost:
     worker = largest + 40.0 * _COORDINATES + 4.0 * per_snapshot * min(kept, run.batch_size)
     return Cost(
         seconds=seconds * run.snapshots,
-        memory=_BASE_MEMORY + worker + 4.0 * tallies,
+        memory=_BASE_MEMORY + tables + worker + 4.0 * tallies,
         memory_per_worker=worker,
         file=60_000.0 + tallies + kept * per_snapshot,
     )

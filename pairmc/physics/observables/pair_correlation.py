@@ -114,8 +114,11 @@ def _count_pairs(position, component, sides, pair_of, bins_per_length, count):
     The separations from one particle to those before it are worked out together, an axis at a time,
     so that they run through the vector unit; only the counting is one by one.
     """
-    particles, dimension = position.shape
+    places, dimension = position.shape
     bins = count.shape[1]
+    particles = 0
+    while particles < places and component[particles] >= 0:
+        particles += 1  # empty places stand behind all particles
     scaled = np.empty((dimension, particles))
     for i in range(particles):
         for a in range(dimension):

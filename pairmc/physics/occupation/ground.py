@@ -1,17 +1,19 @@
-"""Which orbitals are filled in a snapshot, and with what probabilities.
+"""The ground state of fixed particle number.
 
 An occupation answers three questions: draw the filled orbitals of many snapshots, the mean
-occupation of each orbital, and the probability that two orbitals are filled together. The last is
-given by classes: orbitals of one class are alike, so ⟨n_i n_j⟩ for i ≠ j depends on their classes.
+occupation of each orbital, and the probability that two orbitals are filled together, as a sum of
+products (pairs.py).
 """
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
 from numpy.typing import NDArray
 
+from pairmc.physics.occupation.pairs import PairTerm, stacked
 from pairmc.physics.orbitals import Orbitals
 
 
@@ -33,6 +35,8 @@ class GroundState:
 
     orbitals: Orbitals
     population: int
+
+    fixed = True
 
     @property
     def degeneracy(self) -> int:
@@ -82,17 +86,19 @@ class GroundState:
         mean[self.core :] = self.valence / self.degeneracy
         return mean
 
-    def classes(self) -> NDArray[np.int64]:
-        """Return the class of every orbital: 0 in the full levels, 1 in the last one."""
-        classes = np.zeros(len(self.orbitals.level), dtype=np.int64)
-        classes[self.core :] = 1
-        return classes
+    def pair_terms(self) -> Iterator[PairTerm]:
+        """Yield the terms of ⟨n_i n_j⟩, i ≠ j.
 
-    def pair_probability(self) -> NDArray[np.float64]:
-        """Return ⟨n_i n_j⟩, i ≠ j, as a symmetric 2 × 2 table over the classes of i and j.
-
-        Full with full 1 · full with last v/D · last with last v(v−1)/(D(D−1)).
+        Full with full level 1 · full with last v/D · last with last v(v−1)/(D(D−1)): the product of
+        means, corrected within the last level.
         """
         v, D = self.valence, self.degeneracy
-        both = v * (v - 1) / (D * (D - 1)) if D > 1 else 0.0
-        return np.array([[1.0, v / D], [v / D, both]])
+        yield PairTerm(1.0, self.mean())
+        if D > 1 and not self.closed:
+            last = np.zeros(len(self.orbitals.level))
+            last[self.core :] = 1.0
+            yield PairTerm(v * (v - 1) / (D * (D - 1)) - (v / D) ** 2, last)
+
+    def pair_factors(self) -> tuple[NDArray[np.complex128], NDArray[np.complex128]]:
+        """Return the weights and factors of `pair_terms` as arrays (term,), (term, orbital)."""
+        return stacked(self.pair_terms())

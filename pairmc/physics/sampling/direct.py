@@ -7,27 +7,35 @@ from collections.abc import Callable
 import numpy as np
 
 from pairmc.compiled import kernel
-from pairmc.physics.occupation.ground import GroundState
 from pairmc.physics.sampling.chain import draw_positions
 from pairmc.physics.sampling.features import PlaneWaves, plane_waves
-from pairmc.physics.snapshots import Snapshots
-from pairmc.physics.system import System
+from pairmc.physics.snapshots import Snapshots, nothing, packed
+from pairmc.physics.system import Occupation, System
 
 # Gives the generator of a role ("position" or "occupation") for one component.
 Streams = Callable[[str, int], np.random.Generator]
 
 
 @kernel
-def _draw(rng, waves, filled, first, position):
+def _draw(rng, waves, filled, first, label, position, component):
     """Draw one component of many snapshots.
 
-    `filled` names the filled orbitals of every snapshot by their rows in ``waves.numbers``; where
-    it is empty, ``waves.numbers`` are filled in all.
+    `filled` names the filled orbitals of every snapshot by their rows in ``waves.numbers``, −1
+    being padding; where it has no columns, ``waves.numbers`` are filled in all.
     """
     for s in range(position.shape[0]):
-        numbers = waves.numbers[filled[s]] if filled.size > 0 else waves.numbers
-        here = PlaneWaves(numbers, waves.largest, waves.population, waves.like)
-        draw_positions(rng, here, position[s, first : first + waves.population])
+        count = waves.population
+        numbers = waves.numbers
+        if filled.shape[1] > 0:
+            count = 0
+            while count < filled.shape[1] and filled[s, count] >= 0:
+                count += 1
+            numbers = waves.numbers[filled[s, :count]]
+        if count == 0:
+            continue
+        here = PlaneWaves(numbers, waves.largest, count, waves.like)
+        draw_positions(rng, here, position[s, first : first + count])
+        component[s, first : first + count] = label
 
 
 class DirectSampler:
@@ -54,20 +62,28 @@ class DirectSampler:
 
     def draw(self, snapshots: int) -> Snapshots:
         """Return the next `snapshots` snapshots, particles ordered by component."""
-        gas = self._system.gas
-        position = np.empty((snapshots, gas.particles, gas.dimension))
+        occupations = self._system.occupations
+        filled = [
+            np.empty((snapshots, 0), dtype=np.int64)
+            if occupation.closed
+            else occupation.draw(self._occupation[part], snapshots)
+            for part, occupation in enumerate(occupations)
+        ]
+        widths = [
+            occupation.population if occupation.closed else chosen.shape[1]
+            for occupation, chosen in zip(occupations, filled, strict=True)
+        ]
+        drawn = nothing(snapshots, sum(widths), self._system.gas.dimension)
         first = 0
-        for part, occupation in enumerate(self._system.occupations):
-            filled = np.empty((0, 0), dtype=np.int64)
-            if not occupation.closed:
-                filled = occupation.draw(self._occupation[part], snapshots)
-            _draw(self._position[part], self._waves[part], filled, first, position)
-            first += occupation.population
-        component = np.repeat(np.arange(len(gas.populations), dtype=np.int8), gas.populations)
-        return Snapshots(position, np.tile(component, (snapshots, 1)))
+        for part, (chosen, width) in enumerate(zip(filled, widths, strict=True)):
+            rng, waves = self._position[part], self._waves[part]
+            if width:
+                _draw(rng, waves, chosen, first, part, drawn.position, drawn.component)
+            first += width
+        return drawn if all(occupation.fixed for occupation in occupations) else packed(drawn)
 
 
-def _waves(occupation: GroundState) -> PlaneWaves:
+def _waves(occupation: Occupation) -> PlaneWaves:
     """Return the filled plane waves, or all that may be filled where that varies."""
     numbers = occupation.orbitals.numbers
     if occupation.closed:

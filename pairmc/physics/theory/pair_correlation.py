@@ -10,9 +10,10 @@ import numpy as np
 from numpy.typing import NDArray
 from scipy import fft, special
 
+from pairmc.physics.gas import Gas
 from pairmc.physics.grids import SeparationGrid, shell_volumes
-from pairmc.physics.occupation.ground import GroundState
-from pairmc.physics.system import System
+from pairmc.physics.system import Occupation, System
+from pairmc.physics.thermal import amplitude, ground_amplitude
 
 # Wave numbers closer than this fraction are summed as one.
 _SAME_WAVENUMBER = 1e-12
@@ -50,9 +51,10 @@ def expected(system: System, grid: SeparationGrid) -> dict[str, NDArray[np.float
 def bulk(system: System, grid: SeparationGrid) -> dict[str, NDArray[np.float64]]:
     """Return the value of every bin for the infinite system of the same densities.
 
-    Like components: g = 1 − f(k_F r)², with f the transform of the filled Fermi ball,
-    1D sin z/z · 2D 2J₁(z)/z · 3D 3(sin z − z cos z)/z³ (Giuliani & Vignale, 2005, ch. 1);
-    averaged over each bin by Gauss–Legendre quadrature.
+    Like components: g = 1 − f(r)², with f the transform of the occupation of wave vectors: at zero
+    temperature of the filled Fermi ball, 1D sin z/z · 2D 2J₁(z)/z · 3D 3(sin z − z cos z)/z³,
+    z = k_F r (Giuliani & Vignale, 2005, ch. 1), warm as in `pairmc.physics.thermal`; averaged over
+    each bin by Gauss–Legendre quadrature.
 
     Parameters
     ----------
@@ -70,8 +72,7 @@ def bulk(system: System, grid: SeparationGrid) -> dict[str, NDArray[np.float64]]
     correlation = np.ones((len(grid.pairs), grid.bins))
     for row, (_, i, j) in enumerate(grid.pairs):
         if i == j:
-            wavenumber = gas.fermi_wavenumbers[i]
-            correlation[row] = _bulk_like(gas.dimension, wavenumber, grid.edges)
+            correlation[row] = _bulk_like(gas, i, grid.edges)
     return _with_hole(correlation, grid)
 
 
@@ -84,7 +85,7 @@ def _with_hole(
 
 
 def pair_weights(
-    system: System, occupation: GroundState
+    system: System, occupation: Occupation
 ) -> tuple[NDArray[np.float64], NDArray[np.float64]]:
     """Return the wave-vector differences of filled orbitals, by length, and how often each occurs.
 
@@ -106,17 +107,14 @@ def pair_weights(
     reach = numbers.max(axis=0) - numbers.min(axis=0)
     shape = [int(2 * extent + 1) for extent in reach]
     place = tuple((numbers - numbers.min(axis=0)).T)
-    classes, probability = occupation.classes(), occupation.pair_probability()
-    transforms = []
-    for label in range(len(probability)):
-        filled = np.zeros(shape)
-        filled[place] = classes == label
-        transforms.append(fft.rfftn(filled))
-    spectrum = np.zeros_like(transforms[0])
-    for a, first in enumerate(transforms):
-        for b, second in enumerate(transforms):
-            spectrum += probability[a, b] * np.conj(first) * second
-    weights = fft.irfftn(spectrum, s=shape)
+    weights = np.zeros(shape)
+    for weight, factor in occupation.pair_terms():
+        filled = np.zeros(shape, dtype=np.complex128)
+        filled[place] = factor
+        transform = fft.fftn(filled)
+        # Σ_k F(k) F(k + q) without a conjugate: the transform at −p times that at p
+        product = fft.ifftn(_mirrored(transform) * transform)
+        weights += (weight * product).real
     weights.flat[0] = 0.0  # k = k' is not a pair
     square = np.zeros(shape)
     for a, axis in enumerate(system.axes):
@@ -124,6 +122,12 @@ def pair_weights(
         part = axis.wavenumbers(steps) ** 2
         square += part.reshape([-1 if b == a else 1 for b in range(len(shape))])
     return _by_length(np.sqrt(square.ravel()), weights.ravel())
+
+
+def _mirrored(transform: NDArray[np.complex128]) -> NDArray[np.complex128]:
+    """Return a transform at the negative of every frequency."""
+    axes = tuple(range(transform.ndim))
+    return np.roll(np.flip(transform, axes), 1, axes)
 
 
 def _by_length(
@@ -142,7 +146,7 @@ def _by_length(
 
 
 def _like(
-    system: System, occupation: GroundState, edges: NDArray[np.float64]
+    system: System, occupation: Occupation, edges: NDArray[np.float64]
 ) -> NDArray[np.float64]:
     """Return g of one component with itself, averaged over each bin."""
     wavenumbers, weights = pair_weights(system, occupation)
@@ -187,24 +191,18 @@ def shell_mean_cosine(
     return np.diff(integral, axis=1) / shell_volumes(dimension, edges)
 
 
-def bulk_amplitude(dimension: int, z: NDArray[np.float64]) -> NDArray[np.float64]:
-    """Return f(z), z = k_F r: the transform of the filled Fermi ball, 1 at z = 0."""
-    if dimension == 1:
-        return np.sinc(z / np.pi)
-    if dimension == 2:
-        return np.asarray(special.j0(z) + special.jv(2, z))  # = 2 J₁(z)/z
-    return np.asarray(special.spherical_jn(0, z) + special.spherical_jn(2, z))  # = 3 j₁(z)/z
-
-
-def _bulk_like(
-    dimension: int, fermi_wavenumber: float, edges: NDArray[np.float64]
-) -> NDArray[np.float64]:
-    """Return 1 − f² averaged over each bin with the weight r^(d−1)."""
+def _bulk_like(gas: Gas, component: int, edges: NDArray[np.float64]) -> NDArray[np.float64]:
+    """Return 1 − f² of one component averaged over each bin with the weight r^(d−1)."""
+    d, fermi_wavenumber = gas.dimension, gas.fermi_wavenumbers[component]
+    largest = np.sqrt(fermi_wavenumber**2 + 20 * gas.thermal_energy)
     width = float(np.diff(edges).max())
-    nodes, weights = np.polynomial.legendre.leggauss(16 + int(2 * fermi_wavenumber * width))
+    nodes, weights = np.polynomial.legendre.leggauss(16 + int(2 * largest * width))
     middle, half = 0.5 * (edges[1:] + edges[:-1]), 0.5 * np.diff(edges)
     r = middle[:, None] + half[:, None] * nodes
-    measure = weights * r ** (dimension - 1)
-    g = 1.0 - bulk_amplitude(dimension, fermi_wavenumber * r) ** 2
-    averaged: NDArray[np.float64] = (measure * g).sum(axis=1) / measure.sum(axis=1)
+    measure = weights * r ** (d - 1)
+    if gas.thermal_energy == 0:
+        f = ground_amplitude(d, fermi_wavenumber * r)
+    else:
+        f = amplitude(d, gas.densities[component], gas.thermal_energy, r)
+    averaged: NDArray[np.float64] = (measure * (1.0 - f**2)).sum(axis=1) / measure.sum(axis=1)
     return averaged
