@@ -11,6 +11,7 @@ from pairmc.runfile.read import read_run_file, read_run_text
 Problems = Callable[[str], tuple[Problem, ...]]
 
 COUNT = "a whole number from 1 to 20000"
+TEMPERATURE = '0, or a temperature with its unit, such as "0.2 T_F", "40 nK" or "0.01 hartree"'
 GAS_KEYS = "dimension, particles, total_density, r_s, fermi_wavenumber, temperature, mass, ensemble"
 LATER = "is not yet available in this release"
 ONE_SCALE = "only one of total_density, r_s, fermi_wavenumber"
@@ -70,32 +71,33 @@ IN_GAS = {
         "a mass only where the density has a unit",
         'write total_density = "1.1 / um^2", with a unit, or leave out the mass',
     ),
-    'temperature = "0.2 T_F"': (
+    "temperature = 0.2": (
         "temperature",
-        '"0.2 T_F"',
-        f'0, "0 T_F" or "0 nK" (a positive temperature {LATER})',
-        "set temperature = 0 for the ground state",
+        "0.2",
+        TEMPERATURE,
+        'write "0.2 T_F" for a multiple of the majority\'s T_F',
     ),
-    'temperature = "-3 nK"': (
+    'temperature = "-3 nK"': ("temperature", '"-3 nK"', TEMPERATURE, "temperatures are absolute"),
+    'temperature = "0 um"': ("temperature", '"0 um" (a length)', TEMPERATURE, ""),
+    'temperature = "40 nK"': (
         "temperature",
-        '"-3 nK"',
-        '0, "0 T_F" or "0 nK"',
-        "temperatures are absolute",
+        '"40 nK"',
+        "kelvin or an energy only where density has a unit and the mass is given",
+        'give both, or write a multiple of T_F, such as "0.2 T_F"',
     ),
-    'temperature = "0 um"': ("temperature", '"0 um" (a length)', '0, "0 T_F" or "0 nK"', ""),
-    'ensemble = "grand-canonical"': (
-        "ensemble",
-        '"grand-canonical"',
-        f'"canonical" ("grand-canonical" {LATER})',
-        'set ensemble = "canonical": fixed numbers',
+    'temperature = "0.0001 T_F"': (
+        "temperature",
+        "0.0001 T_F of the majority component",
+        "0, or from 0.001 T_F to 100 T_F",
+        "a colder gas is in its ground state, a hotter one is classical",
     ),
     'ensemble = "cannonical"': (
         "ensemble",
         '"cannonical"',
-        '"canonical"',
+        '"canonical" or "grand-canonical"',
         "did you mean canonical?",
     ),
-    "ensemble = 3": ("ensemble", "3", '"canonical"', ""),
+    "ensemble = 3": ("ensemble", "3", '"canonical" or "grand-canonical"', ""),
     "total_densty = 1.0": (
         "total_densty",
         "an unknown key",
