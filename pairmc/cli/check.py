@@ -40,7 +40,7 @@ def check(run_file: str) -> None:
     if gas.polarisation is not None:
         lines.append(f"  polarisation: {gas.polarisation:.5g}")
     lines += ["", _components(run), ""]
-    lines += _closed_shells(run) + open_shell_messages(run)
+    lines += _closed_shells(run) + open_shell_messages(run) + _warm_lines(run)
     lines += _units(run)
     cost = estimate(run)
     lines.append(
@@ -76,6 +76,32 @@ def _components(run: RunFile) -> str:
                 row.append(warmth)
         rows.append(row)
     return text.table(rows)
+
+
+def _warm_lines(run: RunFile) -> list[str]:
+    """Return what a temperature adds: ensemble, λ_T, μ, S(q → 0), the orbitals kept."""
+    gas = run.gas
+    if gas.thermal_wavelength is None:
+        return []
+    from pairmc.physics import thermal
+    from pairmc.physics.occupation.cutoff import TAIL
+
+    wavelength = text.with_unit(gas.thermal_wavelength, gas.units.length)
+    fixed = "fixed populations" if gas.ensemble == "canonical" else "populations are means"
+    lines = [f"{gas.ensemble}: {fixed}; thermal wavelength {wavelength}"]
+    for index, (name, occupation) in enumerate(
+        zip(gas.components, run.system().occupations, strict=True)
+    ):
+        scale = (gas.dimension, gas.densities[index], gas.thermal_energy)
+        fermi_energy = 0.5 * gas.fermi_wavenumbers[index] ** 2
+        lines.append(
+            f"{name}: {gas.thermal_energy / fermi_energy:.4g} of its T_F; infinite gas: μ = "
+            f"{thermal.chemical_potential(*scale) / fermi_energy:.5g} E_F, energy per particle "
+            f"{thermal.energy_per_particle(*scale) / fermi_energy:.5g} E_F, S(q → 0) = "
+            f"{thermal.long_wavelength_structure_factor(*scale):.4g}; "
+            f"{len(occupation.orbitals.level)} orbitals kept (all but {TAIL:g} of a particle)"
+        )
+    return lines
 
 
 def _closed_shells(run: RunFile) -> list[str]:

@@ -289,8 +289,8 @@ class TestDraws:
         energies = SPECTRA[name]
         state = Canonical(spectrum(energies), 3, temperature)
         rng = np.random.default_rng([64, len(energies), int(10 * temperature)])
-        filled = state.draw(rng, 20_000)
-        assert filled.shape == (20_000, 3)
+        filled = state.draw(rng, 150_000)
+        assert filled.shape == (150_000, 3)
         assert filled.dtype == np.int64
         assert np.all(np.diff(filled, axis=1) > 0)
         exact = thermal.canonical_sets(energies, 3, temperature)
@@ -302,7 +302,7 @@ class TestDraws:
         energies = SPECTRA[name]
         state = GrandCanonical(spectrum(energies), 2, temperature)
         rng = np.random.default_rng([65, len(energies), int(10 * temperature)])
-        filled = state.draw(rng, 20_000)
+        filled = state.draw(rng, 150_000)
         held = filled >= 0
         assert filled.dtype == np.int64
         assert held.any(axis=0).all()  # as wide as the fullest snapshot
