@@ -181,7 +181,7 @@ class TestSnapshots:
     )
     CHECKS = 2 * 2 * len(CASES) + 2 * 3 + 2 * 2 + 2
     ALPHA = FAMILY_ALPHA / CHECKS
-    SNAPSHOTS = 2500
+    SNAPSHOTS = 2000
     BINS = 12
 
     def package_p_value(self, snapshots: Snapshots, truth: System) -> float:
