@@ -138,7 +138,7 @@ def draw_positions(rng, waves, position):
             extend_basis(basis, placed, gather_rows(vectors, kept), inside, inverse)
             placed += accepted
             if switch <= placed < population:
-                complement = complement_of(rng, basis[:placed])
+                complement = complement_of(basis[:placed])
         else:
             reflect(complement, left, inside)
             placed += accepted

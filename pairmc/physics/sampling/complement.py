@@ -26,11 +26,22 @@ COMPLEMENT_ERROR = 1e-9
 
 
 @kernel
-def shuffled(rng, size):
-    """Return 0 … size − 1 in random order."""
+def scrambled(state):
+    """Return the next state, below 2³¹, of a linear congruential generator.
+
+    Orders and signs are a fixed sequence and no random stream: how many are used depends on
+    rounding, and positions must not.
+    """
+    return (1103515245 * state + 12345) % 2147483648
+
+
+@kernel
+def shuffled(size, state):
+    """Return 0 … size − 1 in an order that `state` decides."""
     order = np.arange(size)
     for i in range(size - 1, 0, -1):
-        j = int(rng.random() * (i + 1))
+        state = scrambled(state)
+        j = (state >> 8) % (i + 1)
         order[i], order[j] = order[j], order[i]
     return order
 
@@ -48,7 +59,7 @@ def residual_rows(basis, coordinates):
 
 
 @kernel
-def orthonormality_error(rng, basis, rows):
+def orthonormality_error(basis, rows):
     """Return an estimate of how far `rows` are from orthonormal and orthogonal to `basis`.
 
     The longest change of a random vector of signs z under rows rows†, and the longest component of
@@ -56,10 +67,12 @@ def orthonormality_error(rng, basis, rows):
     """
     size, orbitals = rows.shape
     worst = 0.0
+    state = 20261201
     for _ in range(2):
         signs = np.empty((1, size), dtype=rows.dtype)
         for j in range(size):
-            signs[0, j] = 1.0 if rng.random() < 0.5 else -1.0
+            state = scrambled(state)
+            signs[0, j] = 1.0 if state < 1073741824 else -1.0
         image = conjugated(multiply(signs, rows)).reshape(orbitals, 1)
         back = multiply(rows, image)
         for j in range(size):
@@ -96,7 +109,7 @@ def project_coordinates(basis, order):
 
 
 @kernel
-def complement_of(rng, basis):
+def complement_of(basis):
     """Return an orthonormal basis of all that is orthogonal to the rows of `basis`.
 
     Made from unit vectors in random order: random ones are never nearly dependent as a whole,
@@ -106,8 +119,6 @@ def complement_of(rng, basis):
 
     Parameters
     ----------
-    rng : numpy.random.Generator
-        Gives the order.
     basis : array (placed, orbital)
         Orthonormal rows, complex-conjugated.
 
@@ -116,13 +127,13 @@ def complement_of(rng, basis):
     array (orbital − placed, orbital)
         Orthonormal rows, complex-conjugated.
     """
-    best = project_coordinates(basis, shuffled(rng, basis.shape[1]))
-    error = orthonormality_error(rng, basis, best)
-    for _ in range(20):
+    best = project_coordinates(basis, shuffled(basis.shape[1], 1))
+    error = orthonormality_error(basis, best)
+    for trial in range(2, 22):
         if error < COMPLEMENT_ERROR:
             break
-        other = project_coordinates(basis, shuffled(rng, basis.shape[1]))
-        other_error = orthonormality_error(rng, basis, other)
+        other = project_coordinates(basis, shuffled(basis.shape[1], trial))
+        other_error = orthonormality_error(basis, other)
         if other_error < error:
             best, error = other, other_error
     return best
