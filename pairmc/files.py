@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import os
-from collections.abc import Callable
+from collections.abc import Callable, Collection
 from pathlib import Path
 
 from pairmc.errors import InputError, Problem
@@ -29,6 +29,31 @@ def refuse_unless_writable(path: Path) -> None:
     if not os.access(folder, os.W_OK | os.X_OK):
         got = f"folder {folder} is not writable"
         raise InputError(Problem(str(path), got, "", "name another place"))
+
+
+def known_suffix(path: Path, known: Collection[str], advice: str) -> str:
+    """Return the suffix of a file's name, in lower case and without its dot.
+
+    Parameters
+    ----------
+    path
+        The file's name.
+    known
+        The suffixes that are allowed.
+    advice
+        What to say of them where another is refused.
+
+    Raises
+    ------
+    InputError
+        Where it is not among those known.
+    """
+    suffix = path.suffix.lower().removeprefix(".")
+    if suffix not in known:
+        allowed = ", ".join(f".{each}" for each in known)
+        got = f'a name that ends in "{path.suffix}"' if path.suffix else "a name without a suffix"
+        raise InputError(Problem(str(path), got, allowed, advice))
+    return suffix
 
 
 def write_whole(

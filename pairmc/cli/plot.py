@@ -16,14 +16,14 @@ import click
     metavar="PICTURE",
     type=click.Path(),
     required=True,
-    help="Picture to write: .png, .pdf, .svg.",
+    help="Picture to write: .png, .pdf, .svg. It may replace an older picture, no other file.",
 )
 def plot(files: Sequence[str], picture: str) -> None:
     """Draw the exchange hole of result files: sampled, exact for this system, infinite system."""
     from pairmc.figures.draw import draw, picture_format, save
     from pairmc.results.load import load
 
-    picture_format(picture)
+    picture_format(picture, files)
     results = [load(file, snapshots=False) for file in files]
     names = [
         f"{Path(file).name}: {result.title}" for file, result in zip(files, results, strict=True)

@@ -16,6 +16,39 @@ from pairmc.runfile.run import RunFile
 # Seconds between two lines where there is no terminal.
 LINE_EVERY = 30.0
 
+_STARTING = "compiling or starting"
+
+
+class Pace:
+    """Tells how fast batches finish and how long the rest takes.
+
+    The first batch of each worker waits for the kernels to be compiled; what is told of the time
+    that remains rests on later ones, at least one a worker, since workers finish side by side.
+
+    Parameters
+    ----------
+    workers
+        Batches drawn side by side.
+    start
+        When the drawing began, seconds.
+    """
+
+    def __init__(self, workers: int, start: float) -> None:
+        self._workers = workers
+        self._since, self._drawn_then = start, 0
+
+    def note(self, drawn: int, now: float) -> None:
+        """Take notice that so many batches are drawn by now."""
+        if not self._drawn_then and drawn >= self._workers:
+            self._since, self._drawn_then = now, drawn
+
+    def seconds(self, drawn: int, now: float) -> float | None:
+        """Return the seconds a batch takes, all workers together; None while nothing tells it."""
+        later = drawn - self._drawn_then
+        if not self._drawn_then or later < self._workers or now <= self._since:
+            return None
+        return (now - self._since) / later
+
 
 class ProgressDisplay:
     """Shows how far a run is: a context manager whose `report` is given to the sampling loop.
@@ -26,14 +59,17 @@ class ProgressDisplay:
         The run.
     level
         0 shows nothing, 1 progress and remarks, 2 also what made the run and every batch.
+    workers
+        Batches drawn side by side.
     """
 
-    def __init__(self, run: RunFile, level: int) -> None:
+    def __init__(self, run: RunFile, level: int, workers: int = 1) -> None:
         self._run = run
         self._level = level
         self._bar: Any = None
         self._task: Any = None
         self._start = self._said = time.monotonic()
+        self._pace = Pace(workers, self._start)
 
     def __enter__(self) -> ProgressDisplay:
         if self._level >= 2:
@@ -51,7 +87,7 @@ class ProgressDisplay:
                 transient=True,
             )
             self._bar.start()
-            self._task = self._bar.add_task("batches", total=None, rate="compiling or starting")
+            self._task = self._bar.add_task("batches", total=None, rate=_STARTING)
         return self
 
     def __exit__(
@@ -66,10 +102,12 @@ class ProgressDisplay:
     def report(self, progress: Progress) -> None:
         """Show the progress, or say it where the last line is old enough."""
         now = time.monotonic()
-        rate = self._rate(progress, now - self._start)
+        self._pace.note(progress.drawn, now)
+        rate = self._rate(progress, now)
         if self._bar is not None:
             done, total = progress.finished, progress.batches
-            self._bar.update(self._task, completed=done, total=total, rate=rate)
+            waiting = "estimating" if progress.drawn else _STARTING
+            self._bar.update(self._task, completed=done, total=total, rate=rate or waiting)
             return
         last = progress.finished == progress.batches
         if self._level >= 2 or last or now - self._said >= LINE_EVERY:
@@ -83,15 +121,19 @@ class ProgressDisplay:
         elif self._level:
             click.echo(message, err=True)
 
-    def _rate(self, progress: Progress, elapsed: float) -> str:
-        """Return snapshots a second and the time that remains, once a batch has been drawn."""
+    def _rate(self, progress: Progress, now: float) -> str:
+        """Return snapshots a second, and the time that remains once there is a base for it."""
         if not progress.drawn:
             return ""
-        rate = f"{progress.drawn * self._run.batch_size / elapsed:.3g} snapshots/s"
-        left = progress.batches - progress.finished
-        if not left:
-            return rate
-        return f"{rate}, {text.duration(left * elapsed / progress.drawn)} remaining"
+        size, left = self._run.batch_size, progress.batches - progress.finished
+        seconds = self._pace.seconds(progress.drawn, now)
+        if seconds is not None:
+            rate = f"{size / seconds:.3g} snapshots/s"
+            return f"{rate}, {text.duration(left * seconds)} remaining" if left else rate
+        if left:
+            return ""
+        overall = progress.drawn * size / max(now - self._start, 1e-9)
+        return f"{overall:.3g} snapshots/s, start included"
 
     def _say_what_runs(self) -> None:
         """Say the run digest, the versions and the processor."""

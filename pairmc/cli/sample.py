@@ -36,7 +36,8 @@ QUIET, NORMAL, VERBOSE = 0, 1, 2
     metavar="SNAPSHOTS",
     type=click.IntRange(min=1),
     default=None,
-    help="Add so many snapshots to a finished result, rounded up to whole batches.",
+    help="Add so many snapshots to a finished result, or to the run's own where there is none, "
+    "rounded up to whole batches.",
 )
 @click.option("--quiet", is_flag=True, help="No progress and no remarks; only refusals and errors.")
 @click.option("--verbose", is_flag=True, help="Also versions, the run digest and every batch.")
@@ -70,15 +71,16 @@ def sample(
     from pairmc.running.resources import available_cores
 
     path = Path(target) if target else default_result_path(run)
+    count = workers or available_cores()
     level = QUIET if quiet else VERBOSE if verbose else NORMAL
     try:
-        with ProgressDisplay(run, level) as display:
+        with ProgressDisplay(run, level, count) as display:
             for message in open_shell_messages(run):
                 display.say(message)
             sample_into(
                 run,
                 path,
-                workers or available_cores(),
+                count,
                 more or 0,
                 report=display.report,
                 warn=display.say,

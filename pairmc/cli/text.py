@@ -7,6 +7,9 @@ from math import floor, isfinite, log10
 
 from pairmc.units import BOLTZMANN, Units
 
+# Of energies where a run gives no units.
+ENERGY_UNIT = "ħ²/(m·length²)"
+
 PLANCK = 6.62607015e-34  # J s (exact)
 
 _PREFIXES = ((1.0, ""), (1e-3, "m"), (1e-6, "µ"), (1e-9, "n"), (1e-12, "p"))
@@ -31,7 +34,7 @@ def temperature(kelvin: float) -> str:
 def energy(value: float, units: Units) -> str:
     """Return an energy: hartree, or joules with the frequency E/h that laboratories speak of."""
     if not units.energy:
-        return f"{value:.5g} ħ²/(m·length²)"
+        return f"{value:.5g} {ENERGY_UNIT}"
     if units.energy == "hartree":
         return f"{value:.5g} hartree"
     frequency = value / PLANCK
@@ -64,11 +67,10 @@ def exact(value: float, error: float) -> str:
     return f"{round(value, decimals) + 0.0:.{decimals}f}"
 
 
-def probability(value: float | None) -> str:
-    """Return a p-value."""
-    if value is None:
-        return "none"
-    return f"{value:.3f}" if value >= 1e-3 else f"{value:.1e}"
+def counted(number: int, word: str) -> str:
+    """Return a number with the word for what it counts: ``1 merged bin``, ``48 merged bins``."""
+    ending = "" if number == 1 else "es" if word.endswith("ch") else "s"
+    return f"{number} {word}{ending}"
 
 
 def duration(seconds: float) -> str:

@@ -23,6 +23,7 @@ from pairmc.errors import InputError, Problem
 from pairmc.figures import style
 from pairmc.figures.pair_scales import label_separation, label_values, scales_of
 from pairmc.results.audit import INTERVAL_LEVEL
+from pairmc.results.summary import probability, verdict
 from pairmc.statistics import t_quantile
 
 # Pairs in one picture.
@@ -49,9 +50,6 @@ _LEAST_DIFFERENCE = 3.6
 
 # The curve of the infinite system.
 _INFINITE: dict[str, Any] = {"color": style.LIGHT, "linestyle": (0, (2.2, 0.7))}
-
-# Below these global p-values the words change.
-_DOUBTFUL, _EXCLUDED = 1e-2, 1e-4
 
 
 def size(dataset: xr.Dataset) -> tuple[float, float]:
@@ -119,14 +117,10 @@ def in_words(dataset: xr.Dataset) -> str:
     merged = dataset.sizes["pair_correlation_merged_bin"]
     if not np.isfinite(p):
         return "Too few snapshots for a test of all bins together against the exact values."
-    if p >= _DOUBTFUL:
-        verdict = "the sample agrees with the exact values"
-    elif p >= _EXCLUDED:
-        verdict = "such differences from the exact values are rarely chance"
-    else:
-        verdict = "the sample differs from the exact values"
+    shown = probability(p)
+    relation = "" if shown[0] in "<>" else "= "
     bins = "1 merged bin" if merged == 1 else f"All {merged} merged bins together"
-    return f"{bins}: p = {p:.2g}, {verdict}."
+    return f"{bins} against the exact values: p {relation}{shown}, {verdict(p)}."
 
 
 def _shape(dataset: xr.Dataset) -> tuple[int, int]:

@@ -15,7 +15,7 @@ from typing import NamedTuple
 import xarray as xr
 
 from pairmc.errors import InputError, Problem
-from pairmc.files import refuse_unless_writable, remove_unfinished
+from pairmc.files import known_suffix, refuse_unless_writable, remove_unfinished
 from pairmc.results.fold import fold
 from pairmc.results.load import load
 from pairmc.results.standing import stored_batches, usable_parts
@@ -67,7 +67,7 @@ def sample(
     run
         A run, or the path of a run file.
     into
-        Result file to write, which goes on where an interrupted one ended; None keeps nothing.
+        Result file to write, .nc, which goes on where an interrupted one ended; None keeps nothing.
     workers
         Batches drawn side by side; None takes the cores that this process may use. The numbers are
         the same for any.
@@ -117,7 +117,7 @@ def sample_into(
     run
         The run.
     path
-        The result file.
+        The result file; its name ends in .nc.
     workers
         Batches drawn side by side, one thread each.
     more
@@ -139,6 +139,7 @@ def sample_into(
         Where the disk refuses; those finished are kept.
     """
     refuse_unless_writable(path)
+    known_suffix(path, ["nc"], "a result is a netCDF file; end its name in .nc")
     stored = stored_batches(run, path)
     wanted = run.with_batches(_batches_wanted(run, stored, more, warn))
     refuse_unless_it_fits(wanted, path.parent, workers)
@@ -162,9 +163,14 @@ def _batches_wanted(run: RunFile, stored: int, more: int, warn: Warn) -> int:
         return max(run.batches, stored)
     added = -(-more // run.batch_size)
     if added * run.batch_size != more:
+        what = "1 snapshot more is" if more == 1 else f"{more} snapshots more are"
+        batches = "1 batch" if added == 1 else f"{added} batches"
+        rounded = added * run.batch_size
+        warn(f"{what} rounded up to {rounded}: {batches} of {run.batch_size}")
+    if not stored:
         warn(
-            f"{more} snapshots more are rounded up to {added * run.batch_size}: {added} batches of "
-            f"{run.batch_size}"
+            f"there is no result yet: the run's own {run.snapshots} snapshots and "
+            f"{added * run.batch_size} more are drawn"
         )
     return (stored or run.batches) + added
 
@@ -175,7 +181,8 @@ def _say_complete(run: RunFile, path: Path, parts: Parts, warn: Warn) -> None:
     parts.remove(run.batches)
     further = len(parts.finished())
     if further:
-        warn(f"{parts.folder} holds {further} finished batches beyond them; --more takes them up")
+        what, them = ("batch", "it") if further == 1 else ("batches", "them")
+        warn(f"{parts.folder} holds {further} finished {what} beyond them; --more takes {them} up")
 
 
 def _draw_missing(

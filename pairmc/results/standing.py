@@ -3,14 +3,17 @@
 from __future__ import annotations
 
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
-from pairmc.errors import InputError, Problem
+from pairmc.errors import InputError, Problem, ResultFileError
 from pairmc.results.load import batches_in, read_attributes, run_settings
 from pairmc.runfile.digest import canonical, differing_keys
 from pairmc.runfile.run import RunFile
 from pairmc.running.parts import DamagedPartError, Parts
+
+_ANOTHER_PLACE = "name another file with --into, or move that one away"
 
 
 def stored_batches(run: RunFile, path: Path) -> int:
@@ -19,11 +22,16 @@ def stored_batches(run: RunFile, path: Path) -> int:
     Raises
     ------
     InputError
-        Where the file is another run's, naming the key that differs; or cannot be read.
+        Where the file is another run's, naming the key that differs; or no result at all.
     """
     if not path.exists():
         return 0
-    settings = run_settings(read_attributes(path))
+    try:
+        settings = run_settings(read_attributes(path))
+    except ResultFileError as error:
+        (problem,) = error.problems
+        allowed = "a new name, or a result of the same run"
+        raise InputError(replace(problem, allowed=allowed, advice=_ANOTHER_PLACE)) from error
     _refuse_other_run(run, str(path), "the result of another run", settings)
     return batches_in(path)
 
@@ -55,12 +63,13 @@ def _refuse_other_run(run: RunFile, place: str, words: str, settings: dict[str, 
     if not differing:
         return
     key, theirs, mine = differing[0]
-    more = f" (and {len(differing) - 1} more keys differ)" if len(differing) > 1 else ""
+    others = len(differing) - 1
+    more = f" (and {others} more {'key differs' if others == 1 else 'keys differ'})"
     raise InputError(
         Problem(
             place,
-            f"{words}: {key} is {theirs} there and {mine} here{more}",
+            f"{words}: {key} is {theirs} there and {mine} here{more if others else ''}",
             "",
-            "name another file with --into, or move that one away",
+            _ANOTHER_PLACE,
         )
     )

@@ -14,11 +14,14 @@ from typing import NamedTuple
 
 import numpy as np
 import pytest
+import xarray as xr
 from scipy import constants
 
 import pairmc
+from pairmc.cli.describe import _test, _wide_ranges, summary_text
 from pairmc.cli.main import run
 from pairmc.results.load import load
+from pairmc.results.summary import summarise
 from tests.conftest import SMALL, same_data
 from tests.faults.harness import heed_interrupts
 
@@ -129,10 +132,102 @@ def test_describe_prints_text_and_json(call: Call, small_result: Path) -> None:
     assert abs(depth["value"] - depth["expected"]) < 10 * depth["error"]
 
 
+def innermost(result: xr.Dataset, label: str) -> tuple[float, float]:
+    """Return the range of the innermost merged bin of a pair, straight from the file."""
+    part = result.sel(pair=label)
+    inside = part["pair_correlation_merge"].values == part["pair_correlation_merge"].values[0]
+    edges = result["separation_bounds"].values[inside]
+    return edges.min(), edges.max()
+
+
+def test_the_depth_stands_beside_the_range_it_is_averaged_over(
+    call: Call, small_result: Path
+) -> None:
+    result = load(small_result)
+    (summary,) = json.loads(call("describe", "--json", small_result).out)
+    headline = summary["observables"]["pair_correlation"]["headline"]
+    shown = call("describe", small_result).out
+    # √(4π n) of the majority
+    wavenumber = np.sqrt(4 * np.pi * 1.1 * 9 / 14)
+    for label, entry in headline["values"].items():
+        start, stop = innermost(result, label)
+        reach = entry["range"]
+        assert (reach["from"], reach["to"], reach["unit"]) == (start, stop, "um")
+        np.testing.assert_allclose(
+            [reach["scaled_from"], reach["scaled_to"]], wavenumber * np.array([start, stop])
+        )
+        assert reach["scaled_by"] == "k_F of up"
+        assert reach["wide"] == (wavenumber * stop > headline["wide_beyond"] == 0.5)
+        (line,) = (row for row in shown.splitlines() if row.startswith(f"  {label} "))
+        assert f"0 to {stop:.4g} um" in line
+        assert f"0 to {wavenumber * stop:.3g}" in line
+    assert "all pairs: averaged over a range that reaches beyond k_F r = 0.5" in shown
+    assert "not the value at contact" in shown
+
+
+def test_a_narrow_innermost_bin_carries_no_remark(small_result: Path) -> None:
+    headline = summarise(load(small_result))["observables"]["pair_correlation"]["headline"]
+    for entry in headline["values"].values():
+        entry["range"]["wide"] = False
+    assert _wide_ranges(headline) == []
+    headline["values"]["up-down"]["range"]["wide"] = True
+    (line,) = _wide_ranges(headline)
+    assert line.startswith("  up-down: averaged over")
+
+
+@pytest.mark.parametrize(
+    ("p", "shown"),
+    [
+        (1.0, "no sign of disagreement, global p-value > 0.999 ("),
+        (0.9994, "global p-value 0.999 ("),
+        (0.998, "no sign of disagreement, global p-value 0.998 ("),
+        (2e-3, "a sign of disagreement, rarely chance, global p-value 0.002 ("),
+        (2e-7, "sample and exact values disagree, global p-value 2.0e-07 ("),
+        (0.0, "sample and exact values disagree, global p-value < 1e-300 ("),
+    ],
+)
+def test_the_test_is_told_in_words_and_never_as_agreement(
+    small_result: Path, p: float, shown: str
+) -> None:
+    result = load(small_result)
+    attributes = result["pair_correlation_p_value"].attrs
+    result["pair_correlation_p_value"] = ((), p, attributes)
+    told = summary_text({"file": "small.nc"} | summarise(result))
+    assert shown in told
+    assert "agrees" not in told
+
+
+def test_one_merged_bin_and_differences_without_bound(small_result: Path) -> None:
+    audit = summarise(load(small_result))["observables"]["pair_correlation"]
+    said = _test(audit | {"merged_bins": 1, "dimensions_tested": 1})
+    assert "(1 merged bin);" in said
+    assert "(48 merged bins, 47 of them independent);" in _test(audit | {"dimensions_tested": 47})
+    assert "beyond the limit" in _test(audit | {"largest_difference": 1e3})
+    assert _test(audit | {"largest_difference": None}).endswith("where none is possible")
+
+
+def test_energies_without_units_say_what_they_are_counted_in(call: Call, tmp_path: Path) -> None:
+    path = tmp_path / "plain.toml"
+    path.write_text(SMALL.replace('"1.1 / um^2"', "1.1").replace('mass = "6.015 u"', ""))
+    told = call("sample", path, "--quiet").out
+    wavenumber = np.sqrt(4 * np.pi * 1.1 * 9 / 14)
+    assert f"{wavenumber**2 / 2:.5g} ħ²/(m·length²)" in told
+    (summary,) = json.loads(call("describe", "--json", tmp_path / "plain.nc").out)
+    energy = summary["components"]["up"]["fermi_energy"]
+    assert energy["comment"] == "in units of hbar^2 / (mass * length unit^2)"
+
+
+def test_more_of_no_result_is_said(call: Call, run_file: Path) -> None:
+    outcome = call("sample", run_file, "--more", "50")
+    assert outcome.code == 0
+    assert "no result yet: the run's own 400 snapshots and 50 more are drawn" in outcome.err
+
+
 def test_plot_writes_the_picture(call: Call, small_result: Path, tmp_path: Path) -> None:
     outcome = call("plot", small_result, "--into", tmp_path / "hole.png")
     assert outcome.code == 0
     assert (tmp_path / "hole.png").read_bytes().startswith(b"\x89PNG")
+    assert call("plot", small_result, "--into", tmp_path / "hole.png").code == 0
 
 
 @pytest.mark.parametrize(
@@ -212,3 +307,32 @@ def test_a_reader_that_goes_away_is_no_accident(small_result: Path) -> None:
     )
     os.close(write)
     assert b"Traceback" not in process.stderr
+
+
+INTERRUPTED_IMPORT = """
+import sys
+from importlib.abc import MetaPathFinder
+
+class Interrupt(MetaPathFinder):
+    def find_spec(self, name, path, target=None):
+        if name == {name!r}:
+            raise KeyboardInterrupt
+
+from pairmc.cli.main import main
+assert "click" not in sys.modules
+sys.meta_path.insert(0, Interrupt())
+main(["describe", "a.nc"])
+"""
+
+
+@pytest.mark.parametrize("name", ["click", "pairmc.cli.describe", "xarray"])
+def test_an_interrupt_while_libraries_are_loaded_ends_quietly(tmp_path: Path, name: str) -> None:
+    outcome = subprocess.run(
+        [sys.executable, "-c", INTERRUPTED_IMPORT.format(name=name)],
+        cwd=tmp_path,
+        capture_output=True,
+        text=True,
+        check=False,
+    )
+    assert outcome.returncode == 130
+    assert outcome.stderr.strip() == ""

@@ -108,12 +108,34 @@ def test_damaged_and_foreign_results(folder: Path, small_result: Path) -> None:
     for name, contents in {"cut.nc": whole[:5000], "text.nc": b"nothing", "empty.nc": b""}.items():
         (folder / name).write_bytes(contents)
         refused(pairmc(folder, "describe", name), name, "cannot be read")
-        refused(pairmc(folder, "sample", "run.toml", "--into", name), name)
+        outcome = pairmc(folder, "sample", "run.toml", "--into", name)
+        refused(outcome, name, "cannot be read", "name another file with --into, or move that")
+        assert "Errno" not in outcome.stderr
+        assert "sample again" not in outcome.stderr
         assert (folder / name).read_bytes() == contents
     (folder / "new.nc").write_bytes(whole)
     with netCDF4.Dataset(folder / "new.nc", "a") as file:
         file.setncattr("pairmc_schema", "9.0")
     refused(pairmc(folder, "describe", "new.nc"), "schema 9.0", "update pairmc")
+    refused(pairmc(folder, "sample", "run.toml", "--into", "new.nc"), "schema 9.0", "--into")
+
+
+def test_a_name_that_no_result_may_have(folder: Path) -> None:
+    for name in ("a.txt", "run.toml", "a"):
+        refused(pairmc(folder, "sample", "run.toml", "--into", name), name, "allowed: .nc")
+    assert [path.name for path in folder.iterdir()] == ["run.toml"]
+
+
+def test_a_picture_replaces_no_other_file(folder: Path, small_result: Path) -> None:
+    others = {"text.png": b"a text", "run.png": small_result.read_bytes()}
+    for name, contents in others.items():
+        (folder / name).write_bytes(contents)
+        for result in (str(small_result), "run.png"):
+            refused(pairmc(folder, "plot", result, "--into", name), name, "older PNG picture")
+        assert (folder / name).read_bytes() == contents
+    outcome = pairmc(folder, "plot", "run.png", "--into", "run.png")
+    refused(outcome, "a result that is to be drawn", "name another file")
+    assert sorted(path.name for path in folder.iterdir()) == ["run.png", "run.toml", "text.png"]
 
 
 def test_more_of_nothing(folder: Path) -> None:

@@ -13,11 +13,17 @@ import xarray as xr
 from matplotlib import image
 
 from pairmc.errors import InputError
-from pairmc.figures.draw import METADATA, MOST_RESULTS, draw, picture_format, plot, save
+from pairmc.figures.draw import (
+    BEGINNINGS,
+    METADATA,
+    MOST_RESULTS,
+    draw,
+    picture_format,
+    plot,
+    save,
+)
 from pairmc.figures.style import SETTINGS, unit_in_words, wrap
 from pairmc.physics.observables import registry
-
-BEGINNINGS = {"png": b"\x89PNG", "pdf": b"%PDF", "svg": b"<?xml"}
 
 
 @pytest.mark.parametrize("kind", METADATA)
@@ -26,7 +32,7 @@ def test_a_picture_is_of_the_kind_that_its_suffix_says(
 ) -> None:
     path = tmp_path / f"ring.{kind.upper()}"
     save(draw([results["ring"]]), path)
-    assert path.read_bytes().startswith(BEGINNINGS[kind])
+    assert path.read_bytes().startswith({"png": b"\x89PNG", "pdf": b"%PDF", "svg": b"<?xml"}[kind])
     assert list(tmp_path.iterdir()) == [path]
 
 
@@ -87,7 +93,8 @@ def test_nothing_is_left_half_written(
     results: dict[str, xr.Dataset], tmp_path: Path, monkeypatch: pytest.MonkeyPatch
 ) -> None:
     path = tmp_path / "ring.png"
-    path.write_bytes(b"an older picture")
+    older = BEGINNINGS["png"][0] + b"an older picture"
+    path.write_bytes(older)
     figure = draw([results["ring"]])
 
     def fail(temporary: Path, **_: object) -> None:
@@ -98,7 +105,43 @@ def test_nothing_is_left_half_written(
     with pytest.raises(OSError, match="full"):
         save(figure, path)
     assert list(tmp_path.iterdir()) == [path]
-    assert path.read_bytes() == b"an older picture"
+    assert path.read_bytes() == older
+
+
+@pytest.mark.parametrize("kind", METADATA)
+def test_only_an_older_picture_of_the_same_format_is_replaced(
+    results: dict[str, xr.Dataset], tmp_path: Path, kind: str
+) -> None:
+    path, figure = tmp_path / f"ring.{kind}", draw([results["ring"]])
+    path.touch()
+    for _ in range(2):
+        save(figure, path)
+    picture = path.read_bytes()
+    for other in METADATA:
+        if other == kind:
+            continue
+        wrong = tmp_path / f"wrong.{other}"
+        wrong.write_bytes(picture)
+        with pytest.raises(InputError, match=f"is no {other.upper()} picture"):
+            save(figure, wrong)
+        assert wrong.read_bytes() == picture
+        wrong.unlink()
+    for contents in (b"a text", b"\x89HDF\r\n\x1a\n", b"<?xml version='1.0'?><html/>"):
+        path.write_bytes(contents)
+        with pytest.raises(InputError, match="new name"):
+            picture_format(path)
+        assert path.read_bytes() == contents
+    assert list(tmp_path.iterdir()) == [path]
+
+
+def test_a_result_that_is_drawn_is_not_replaced(small_result: Path, tmp_path: Path) -> None:
+    result = tmp_path / "result.png"
+    result.write_bytes(small_result.read_bytes())
+    (tmp_path / "link.png").symlink_to(result)
+    for name in ("result.png", "link.png"):
+        with pytest.raises(InputError, match="a result that is to be drawn"):
+            plot(result, tmp_path / name)
+    assert result.read_bytes() == small_result.read_bytes()
 
 
 def test_several_results_stand_below_one_another(results: dict[str, xr.Dataset]) -> None:
@@ -133,6 +176,28 @@ def test_plot_takes_one_result_or_several_and_refuses_before_drawing(
     assert len(plot([results["ring"], results["ring"]]).subfigs) == 2
     with pytest.raises(InputError, match="suffix"):
         plot(xr.Dataset(), tmp_path / "ring.gif")
+
+
+def test_plot_takes_paths_as_well(
+    results: dict[str, xr.Dataset], small_result: Path, tmp_path: Path
+) -> None:
+    for given in (small_result, str(small_result)):
+        (panel,) = plot(given).subfigs
+        assert panel.get_suptitle() == "Small sheet"
+    plot(str(small_result), str(tmp_path / "small.png"))
+    assert (tmp_path / "small.png").is_file()
+    assert len(plot([small_result, results["ring"], str(small_result)]).subfigs) == 3
+    with pytest.raises(InputError, match="no such file"):
+        plot("nowhere.nc")
+
+
+def test_anything_else_is_refused_by_its_type(results: dict[str, xr.Dataset]) -> None:
+    correlation = results["ring"]["pair_correlation"]
+    for given, name in ((None, "NoneType"), (3, "int"), (b"a.nc", "bytes"), (correlation, "Data")):
+        with pytest.raises(InputError, match=f"got a value of type {name}"):
+            plot(given)  # type: ignore[arg-type]
+        with pytest.raises(InputError, match=f"got a list with a value of type {name}"):
+            plot([results["ring"], given])  # type: ignore[list-item]
 
 
 def test_every_observable_can_be_drawn() -> None:

@@ -226,16 +226,24 @@ def test_the_legend_names_all_that_is_drawn(results: dict[str, xr.Dataset]) -> N
 @pytest.mark.parametrize(
     ("p", "words"),
     [
-        (0.37, "p = 0.37, the sample agrees with the exact values."),
-        (0.004, "p = 0.004, such differences from the exact values are rarely chance."),
-        (3e-7, "p = 3e-07, the sample differs from the exact values."),
-        (0.0, "p = 0, the sample differs from the exact values."),
+        (1.0, "against the exact values: p > 0.999, no sign of disagreement."),
+        (0.998, "p = 0.998, no sign of disagreement."),
+        (0.37, "p = 0.370, no sign of disagreement."),
+        (0.004, "p = 0.004, a sign of disagreement, rarely chance."),
+        (3e-7, "p = 3.0e-07, sample and exact values disagree."),
+        (0.0, "p < 1e-300, sample and exact values disagree."),
         (np.nan, "Too few snapshots for a test of all bins together against the exact values."),
     ],
 )
 def test_the_global_test_in_words(results: dict[str, xr.Dataset], p: float, words: str) -> None:
     changed = results["sheet"].assign(pair_correlation_p_value=p)
     assert in_words(changed).endswith(words)
+    assert "agrees" not in in_words(changed)
+
+
+def test_one_merged_bin_is_singular(results: dict[str, xr.Dataset]) -> None:
+    one = results["sheet"].isel(pair_correlation_merged_bin=[0])
+    assert in_words(one).startswith("1 merged bin against")
 
 
 def test_what_is_drawn_is_told_apart_without_colour(results: dict[str, xr.Dataset]) -> None:

@@ -68,6 +68,19 @@ def test_more_snapshots_are_rounded_up_and_that_is_said(
     assert same_data(load(finished), load(tmp_path / "whole.nc")) == []
 
 
+def test_more_of_no_result_counts_from_the_runs_own_snapshots_and_says_so(
+    small_run: RunFile, tmp_path: Path
+) -> None:
+    recorder = Recorder()
+    path = tmp_path / "run.nc"
+    sample_into(small_run, path, more=1, warn=recorder.warn, report=recorder.report)
+    assert recorder.said == [
+        "1 snapshot more is rounded up to 50: 1 batch of 50",
+        "there is no result yet: the run's own 400 snapshots and 50 more are drawn",
+    ]
+    assert recorder.drawn == 9
+
+
 def test_fewer_batches_leave_a_longer_result_as_it_is(
     variant: Variant, small_run: RunFile, finished: Path
 ) -> None:

@@ -20,6 +20,8 @@ from tests.conftest import same_data
 
 Variant = Callable[..., RunFile]
 
+SCHEMA_1_0 = Path(__file__).parent.parent / "data" / "schema-1.0.nc"
+
 
 class PlannedStopError(Exception):
     """Raised where a test interrupts a run."""
@@ -84,9 +86,11 @@ def test_the_result_of_another_run_is_refused_and_left(
     variant: Variant, small_result: Path
 ) -> None:
     before = small_result.read_bytes()
-    other = variant(("up = 9", "up = 13"))
-    with pytest.raises(InputError, match=r"gas\.populations"):
-        sample_into(other, small_result)
+    change, others = ("up = 9", "up = 13"), [("seed = 11", "seed = 12"), ("bins = 20", "bins = 21")]
+    for more, words in enumerate(["here; name", "(and 1 more key differs)", "2 more keys differ"]):
+        with pytest.raises(InputError, match=r"gas\.populations") as caught:
+            sample_into(variant(change, *others[:more]), small_result)
+        assert words in str(caught.value)
     assert small_result.read_bytes() == before
 
 
@@ -108,6 +112,44 @@ def test_a_place_that_cannot_be_written_is_refused(
     with pytest.raises(InputError):
         sample_into(small_run, tmp_path / place)
     assert list(tmp_path.iterdir()) == []
+
+
+@pytest.mark.parametrize("contents", [b"junk", b"", b"\x89HDF\r\n\x1a\n and no more"])
+def test_a_file_that_is_no_result_is_refused_and_left(
+    small_run: RunFile, tmp_path: Path, contents: bytes
+) -> None:
+    path = tmp_path / "junk.nc"
+    path.write_bytes(contents)
+    with pytest.raises(InputError) as caught:
+        sample_into(small_run, path)
+    said = str(caught.value)
+    assert f"{path}: got a file that cannot be read" in said
+    assert said.endswith("name another file with --into, or move that one away")
+    assert "Errno" not in said
+    assert path.read_bytes() == contents
+    assert list(tmp_path.iterdir()) == [path]
+
+
+@pytest.mark.parametrize(("name", "got"), [("run.txt", '".txt"'), ("run", "without a suffix")])
+def test_a_name_that_does_not_end_in_nc_is_refused_before_drawing(
+    small_run: RunFile, tmp_path: Path, name: str, got: str
+) -> None:
+    with pytest.raises(InputError, match=got) as caught:
+        sample_into(small_run, tmp_path / name)
+    assert caught.value.problems[0].allowed == ".nc"
+    assert list(tmp_path.iterdir()) == []
+
+
+def test_labels_are_text_for_plain_xarray_too(small_result: Path) -> None:
+    pairs, spins = ["up-up", "up-down", "down-down"], ["up", "down"]
+    with xr.open_dataset(small_result) as plain:
+        assert list(plain["pair"].values) == pairs
+        assert list(plain["spin"].values) == spins
+        assert plain["pair_correlation"].sel(pair="up-down").dims == ("separation",)
+    for path in (small_result, SCHEMA_1_0):  # which names no encoding
+        result = load(path)
+        assert result["pair"].dtype.kind == result["spin"].dtype.kind == "U"
+        assert list(result["pair"].values) == pairs
 
 
 def test_parts_stay_until_the_result_has_been_read_back(
