@@ -134,7 +134,7 @@ def separation_grid(system: System, bins: int) -> SeparationGrid:
     pairs = pair_labels(gas.components)
     edges = np.linspace(0.0, 0.5 * min(system.sides), bins + 1)
     shells = shell_volumes(gas.dimension, edges)
-    densities = gas.densities
+    densities = system.detected_densities
     weights = [
         (0.5 if i == j else 1.0) * densities[i] * densities[j] * gas.volume for _, i, j in pairs
     ]

@@ -7,7 +7,7 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass
-from math import prod
+from math import hypot, pi, prod
 
 import numpy as np
 from numpy.typing import NDArray
@@ -39,10 +39,96 @@ class Orbitals:
     energies: NDArray[np.float64]
     level: NDArray[np.int64]
 
+    def __len__(self) -> int:
+        return len(self.numbers)
+
     @property
     def closed(self) -> NDArray[np.int64]:
         """Populations that fill the lowest levels and leave none partly filled, ascending."""
         return np.cumsum(np.bincount(self.level))
+
+
+@dataclass(frozen=True, eq=False)
+class TwistedOrbitals:
+    """The orbitals that are filled at one twist or another, where every snapshot has its own.
+
+    Parameters
+    ----------
+    numbers : array (orbital, axis) of int64
+        Quantum numbers, in their own order.
+    axes
+        The axes without a twist.
+    """
+
+    numbers: NDArray[np.int64]
+    axes: tuple[Periodic, ...]
+
+    def __len__(self) -> int:
+        return len(self.numbers)
+
+    def energies(self, twists: NDArray[np.float64]) -> NDArray[np.float64]:
+        """Return k²/2 of every orbital at every twist.
+
+        Parameters
+        ----------
+        twists : array (snapshot, axis)
+            τ, in units of 2π.
+
+        Returns
+        -------
+        array (snapshot, orbital)
+        """
+        total = np.zeros((len(twists), len(self.numbers)))
+        for a, axis in enumerate(self.axes):
+            k = axis.steps(self.numbers[:, a]) + 2 * pi / axis.length * twists[:, a, None]
+            total += 0.5 * k * k
+        return total
+
+
+def enumerate_any_twist(axes: Sequence[Periodic], energy: float) -> TwistedOrbitals:
+    """Return all orbitals whose energy is below `energy` at some twist.
+
+    Parameters
+    ----------
+    axes
+        One axis per dimension.
+    energy
+        In units of ħ²/(m · length²).
+    """
+    wavenumber = (2 * energy) ** 0.5
+    choices = []
+    for axis in axes:
+        largest = int(wavenumber * axis.length / (2 * pi) + 0.5) + 1
+        choices.append(np.arange(-largest, largest + 1, dtype=np.int64))
+    grid = np.meshgrid(*choices, indexing="ij")
+    numbers = np.stack([part.ravel() for part in grid], axis=1)
+    nearest = np.maximum(np.abs(numbers) - 0.5, 0.0) * [2 * pi / axis.length for axis in axes]
+    kept = (nearest * nearest).sum(axis=1) <= (1 + 1e-9) * wavenumber**2
+    return TwistedOrbitals(numbers[kept], tuple(axes))
+
+
+def filled_at_any_twist(axes: Sequence[Periodic], population: int) -> float:
+    """Return an energy below which there are `population` orbitals whatever the twist.
+
+    Every point of a ball of radius R lies within half the diagonal δ of the cell of wave vectors
+    around one of them, so a ball of radius R + δ holds at least as many as R has cells: k_F + δ.
+
+    Parameters
+    ----------
+    axes
+        One axis per dimension.
+    population
+        At least 1.
+    """
+    density = population / prod(axis.length for axis in axes)
+    diagonal = hypot(*(pi / axis.length for axis in axes))
+    return float(0.5 * (fermi_wavenumber(len(axes), density) + diagonal) ** 2)
+
+
+def nothing_filled(dimension: int) -> Orbitals:
+    """Return no orbital at all, for a component without particles."""
+    none = np.empty(0, dtype=np.int64)
+    return Orbitals(np.empty((0, dimension), dtype=np.int64), np.empty(0), none)
 
 
 def enumerate_orbitals(axes: Sequence[Periodic], count: int) -> Orbitals:

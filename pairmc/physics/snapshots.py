@@ -21,10 +21,17 @@ class Snapshots(NamedTuple):
         Fractions of the sides, in [0, 1); NaN where there is no particle.
     component : array (snapshot, particle) of int8
         Component of each particle; `NO_COMPONENT` where there is none, after all particles.
+    twist : array (snapshot, axis) of float64
+        Twist of each snapshot in units of 2π; empty where all have the same.
     """
 
     position: NDArray[Any]
     component: NDArray[np.int8]
+    twist: NDArray[np.float64] = np.empty((0, 0))
+
+    def first(self, count: int) -> Snapshots:
+        """Return the first `count` snapshots."""
+        return Snapshots(self.position[:count], self.component[:count], self.twist[:count])
 
 
 def packed(snapshots: Snapshots) -> Snapshots:
@@ -36,6 +43,7 @@ def packed(snapshots: Snapshots) -> Snapshots:
     return Snapshots(
         np.take_along_axis(snapshots.position, order[:, :, None], axis=1),
         np.take_along_axis(snapshots.component, order, axis=1),
+        snapshots.twist,
     )
 
 
@@ -55,6 +63,7 @@ def joined(parts: Sequence[Snapshots], particles: int, dimension: int) -> Snapsh
     return Snapshots(
         np.concatenate([widened(part, width).position for part in parts]),
         np.concatenate([widened(part, width).component for part in parts]),
+        np.concatenate([part.twist for part in parts]),
     )
 
 
@@ -72,4 +81,5 @@ def widened(snapshots: Snapshots, width: int) -> Snapshots:
     return Snapshots(
         np.pad(snapshots.position, ((0, 0), (0, missing), (0, 0)), constant_values=np.nan),
         np.pad(snapshots.component, ((0, 0), (0, missing)), constant_values=NO_COMPONENT),
+        snapshots.twist,
     )

@@ -67,7 +67,7 @@ def chemical_potential(dimension: int, density: float, thermal_energy: float) ->
     low = T * log(density * thermal_length**dimension) - T
 
     def excess(potential: float) -> float:
-        k, weight = _bell(potential, T, 0.0)
+        k, weight = bell(potential, T, 0.0)
         return float(weight @ _ground_density(dimension, k)) / density - 1.0
 
     high = fermi_energy + 10 * T
@@ -77,7 +77,7 @@ def chemical_potential(dimension: int, density: float, thermal_energy: float) ->
 def energy_per_particle(dimension: int, density: float, thermal_energy: float) -> float:
     """Return E/N = n⁻¹ ∫ dε (−∂n_F/∂ε) d/(d+2) ε n₀(ε)."""
     potential = chemical_potential(dimension, density, thermal_energy)
-    k, weight = _bell(potential, thermal_energy, 0.0)
+    k, weight = bell(potential, thermal_energy, 0.0)
     energies = dimension / (dimension + 2) * 0.5 * k * k * _ground_density(dimension, k)
     return float(weight @ energies) / density
 
@@ -87,7 +87,7 @@ def long_wavelength_structure_factor(
 ) -> float:
     """Return S(q → 0) = (k_B T/n) ∂n/∂μ of the infinite gas, with ∂n₀/∂ε = d n₀/k²."""
     potential = chemical_potential(dimension, density, thermal_energy)
-    k, weight = _bell(potential, thermal_energy, 0.0)
+    k, weight = bell(potential, thermal_energy, 0.0)
     states = dimension * _ground_density(dimension, k) / k**2
     return thermal_energy * float(weight @ states) / density
 
@@ -109,7 +109,7 @@ def amplitude(dimension: int, density: float, thermal_energy: float, r: FloatArr
     """
     potential = chemical_potential(dimension, density, thermal_energy)
     flat = np.ravel(r)
-    k, weight = _bell(potential, thermal_energy, float(flat.max(initial=0.0)))
+    k, weight = bell(potential, thermal_energy, float(flat.max(initial=0.0)))
     share = weight * _ground_density(dimension, k) / density
     values = np.empty_like(flat)
     for start in range(0, len(flat), _CHUNK):
@@ -123,21 +123,55 @@ def _ground_density(dimension: int, k: FloatArray) -> FloatArray:
     return ball_volume(dimension, 1.0) * (k / (2 * pi)) ** dimension
 
 
-def _bell(
+def bell(
     potential: float, thermal_energy: float, largest_separation: float
 ) -> tuple[FloatArray, FloatArray]:
     """Return wave numbers k and weights of ∫ dε (−∂n_F/∂ε) …, ε = k²/2, as a sum over k.
 
-    Panels are as many as cos(k r) needs at the largest separation.
+    Parameters
+    ----------
+    potential, thermal_energy
+        μ and k_B T > 0.
+    largest_separation
+        Panels are as many as cos(k r) needs there, length units.
     """
-    T = thermal_energy
-    lowest = sqrt(2 * max(0.0, potential - _REACH * T))
-    highest = sqrt(2 * (max(0.0, potential) + _REACH * T))
+    lowest, highest = bell_ends(potential, thermal_energy)
     panels = _PANELS + int((highest - lowest) * largest_separation / 4)
+    k, weight = panel_nodes(np.array(lowest), np.array(highest), panels)
+    return k, weight * bell_density(k, potential, thermal_energy)
+
+
+def bell_ends(potential: float, thermal_energy: float) -> tuple[float, float]:
+    """Return the wave numbers between which the bell is not negligible."""
+    lowest = sqrt(2 * max(0.0, potential - _REACH * thermal_energy))
+    return lowest, sqrt(2 * (max(0.0, potential) + _REACH * thermal_energy))
+
+
+def bell_density(k: FloatArray, potential: float, thermal_energy: float) -> FloatArray:
+    """Return −∂n_F/∂k at wave numbers k."""
+    filled = fermi_function(0.5 * k * k, potential, thermal_energy)
+    empty = fermi_function(-0.5 * k * k, -potential, thermal_energy)
+    return k * filled * empty / thermal_energy
+
+
+def panel_nodes(
+    start: FloatArray, stop: FloatArray, panels: int = _PANELS
+) -> tuple[FloatArray, FloatArray]:
+    """Return Gauss–Legendre nodes and weights in equal panels of intervals.
+
+    Parameters
+    ----------
+    start, stop : array (…)
+        Ends of each interval.
+    panels
+        Panels of each.
+
+    Returns
+    -------
+    nodes, weights : array (…, node)
+    """
     nodes, weights = np.polynomial.legendre.leggauss(_NODES)
-    edges = np.linspace(lowest, highest, panels + 1)
-    half = 0.5 * np.diff(edges)[:, None]
-    k = (0.5 * (edges[1:] + edges[:-1])[:, None] + half * nodes).ravel()
-    filled = fermi_function(0.5 * k * k, potential, T)
-    empty = fermi_function(-0.5 * k * k, -potential, T)
-    return k, (half * weights).ravel() * k * filled * empty / T
+    unit = ((np.arange(panels)[:, None] + 0.5 * (1 + nodes)) / panels).ravel()
+    width = (stop - start)[..., None]
+    share = np.tile(weights, panels) / (2 * panels)
+    return start[..., None] + width * unit, width * share

@@ -3,7 +3,6 @@
 from __future__ import annotations
 
 from dataclasses import dataclass
-from types import ModuleType
 from typing import Any
 
 import numpy as np
@@ -86,7 +85,8 @@ class Audit:
         The observable's main variable in each merged bin: mean, standard error over batches,
         expectation.
     difference : array (merged,)
-        (value − expected)/error: Student's t with batches − 1 degrees of freedom.
+        (value − expected)/error: Student's t with batches − 1 degrees of freedom. Where every
+        snapshot has an expectation of its own, the error is that of what these leave.
     test
         Global test over all merged bins.
     """
@@ -100,44 +100,50 @@ class Audit:
 
 
 def audit(
-    module: ModuleType,
     grid: Any,
     counts: NDArray[np.int64],
     moments: Moments,
-    expected: dict[str, FloatArray],
+    expected: FloatArray,
 ) -> Audit:
     """Hold an observable's counts against their expectation.
 
     Parameters
     ----------
-    module
-        The observable.
     grid
         Its grid.
     counts : array (batch, …)
         Its counts, batch by batch.
     moments
-        Of its joint bins, over single snapshots.
-    expected
-        Its expected values.
+        Of its joint bins, over single snapshots; of what their expectations leave, where these
+        differ between snapshots.
+    expected : array (…), or (batch, …) where the expectations of batches differ
+        Expected counts of a batch.
     """
-    M = moments.snapshots
-    mean = grid.joint_sums(module.mean_counts(expected, grid))
+    M, batches = moments.snapshots, counts.shape[0]
+    differing = expected.ndim == counts.ndim
+    mean = grid.joint_sums(expected.mean(axis=0) if differing else expected) * (batches / M)
     groups = merge_for_test(M * mean, grid.blocks, M)
     merged = groups[grid.joint]
     size = int(groups.max(initial=-1)) + 1
     predicted = sum_by_group(mean, groups, size)
     per_batch = np.stack([sum_by_group(row, merged, size) for row in counts])
-    per_batch *= counts.shape[0] / M
+    per_batch *= batches / M
     value, error = per_batch.mean(axis=0), standard_error(per_batch)
+    difference, spread, reference = value - predicted, error, predicted
+    if differing:
+        residual = np.stack([sum_by_group(row, merged, size) for row in counts - expected]) * (
+            batches / M
+        )
+        difference, spread = residual.mean(axis=0), standard_error(residual)
+        reference = np.zeros(size)
     ideal = sum_by_group(grid.ideal, merged, size)
     return Audit(
         merged=merged,
         value=value / ideal,
         error=error / ideal,
         expected=predicted / ideal,
-        difference=_ratio(value - predicted, error, predicted),
-        test=hotelling(moments.merged(groups), predicted),
+        difference=_ratio(difference, spread, predicted),
+        test=hotelling(moments.merged(groups), reference),
     )
 
 

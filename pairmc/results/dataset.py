@@ -13,10 +13,12 @@ from numpy.typing import NDArray
 
 from pairmc.physics.observables import registry
 from pairmc.physics.observables.variable import Variable
+from pairmc.physics.theory import energy
 from pairmc.results import schema
 from pairmc.results.audit import INTERVAL_LEVEL, Audit, CountErrors, audit, count_errors
 from pairmc.results.collect import Collected
 from pairmc.results.scales import component_labels, scale_variables
+from pairmc.results.singlet import singlet_variables
 from pairmc.runfile.digest import canonical, digest
 from pairmc.runfile.run import RunFile
 
@@ -58,12 +60,31 @@ def build_dataset(run: RunFile, collected: Collected) -> xr.Dataset:
         np.stack(collected.populations) / run.batch_size,
         {"units": "1", "long_name": "particles of the component, mean over the batch"},
     )
-    variables |= scale_variables(run)
+    variables |= scale_variables(run, _energies(run, collected))
+    if collected.energy_ratios:
+        words = "exact kinetic energy over that of the infinite system, mean over the twists of "
+        variables["energy_ratio"] = (
+            ("batch", "spin"),
+            np.stack(collected.energy_ratios),
+            {"units": "1", "long_name": f"{words}the batch"},
+        )
     for name in run.observables:
         more, where = _observable(run, name, collected)
         variables |= more
         coordinates |= where
+    grid = registry.observable("pair_correlation").grid(
+        run.observables["pair_correlation"], run.system()
+    )
+    variables |= singlet_variables(run, collected, grid)
     return xr.Dataset(variables, coords=coordinates, attrs=attributes(run, collected))
+
+
+def _energies(run: RunFile, collected: Collected) -> NDArray[np.float64]:
+    """Return the exact kinetic energy of each component, over the twists where there are many."""
+    if collected.energy_ratios:
+        bulk = np.array(run.gas.populations) * energy.bulk_per_particle(run.gas)
+        return np.asarray(np.mean(collected.energy_ratios, axis=0) * bulk)
+    return energy.expected(run.system())
 
 
 def attributes(run: RunFile, collected: Collected) -> dict[str, Any]:
@@ -83,7 +104,7 @@ def attributes(run: RunFile, collected: Collected) -> dict[str, Any]:
         "seed": str(run.seed),
         "made_with": json.dumps(collected.made, sort_keys=True),
         "normalisation": schema.NORMALISATION,
-        "ensemble": schema.ensemble_words(run.gas.ensemble, run.gas.thermal_energy > 0),
+        "ensemble": schema.ensemble_words(run),
     }
 
 
@@ -94,9 +115,17 @@ def _observable(run: RunFile, name: str, collected: Collected) -> tuple[Variable
     grid = module.grid(run.observables[name], system)
     tallies = collected.tallies[name]
     counts, moments = tallies.stacked(), tallies.moments(run.snapshots)
-    expected, bulk = theory.expected(system, grid), theory.bulk(system, grid)
-    errors = count_errors(counts, run.snapshots * module.mean_counts(expected, grid))
-    judged = audit(module, grid, counts, moments, expected)
+    bulk = theory.bulk(system, grid)
+    predicted = tallies.expected()
+    if predicted is None:
+        expected = theory.expected(system, grid)
+        predicted = run.batch_size * module.mean_counts(expected, grid)
+        total = run.batches * predicted
+    else:
+        total = predicted.sum(axis=0)
+        expected = module.values(total, run.snapshots, grid)
+    errors = count_errors(counts, total)
+    judged = audit(grid, counts, moments, predicted)
 
     variables = _values(run, module, grid, counts.sum(axis=0), errors)
     variables[module.COUNT_NAME] = (
@@ -107,12 +136,18 @@ def _observable(run: RunFile, name: str, collected: Collected) -> tuple[Variable
     for key, variable in module.VARIABLES.items():
         exact = _describe(run, variable, ", exact value for this finite system, bin average")
         exact["expectation_source"] = "exact"
+        if tallies.expected_counts:
+            exact["comment"] = "mean over the twists of all snapshots"
         variables[f"{key}_expected"] = (variable.dimensions, expected[key], exact)
         infinite = _describe(run, variable, ", infinite system of the same densities, bin average")
         variables[f"{key}_bulk"] = (variable.dimensions, bulk[key], infinite)
     variables |= _audit_variables(run, name, module, judged)
     variables |= _headline(run, module, grid, judged)
-    variables |= _moment_variables(name, grid, tallies.moment_sum, tallies.moment_product)
+    if tallies.expected_counts:
+        about = _describe(run, module.COUNT, ", expected at the twists of the batch")
+        where = ("batch", *module.COUNT.dimensions)
+        variables[f"{module.COUNT_NAME}_expected"] = (where, predicted, about)
+    variables |= _moment_variables(name, grid, tallies.sums)
 
     coordinates: Variables = {
         key: (part.dimensions, part.values, _coordinate_attributes(run, key, part))
@@ -234,26 +269,33 @@ def _audit_variables(run: RunFile, name: str, module: Any, judged: Audit) -> Var
     }
 
 
-def _moment_variables(name: str, grid: Any, total: Any, product: Any) -> Variables:
+def _moment_variables(name: str, grid: Any, sums: dict[str, NDArray[Any]]) -> Variables:
     """Return the sums over snapshots from which covariances are worked out at reading."""
     joint = f"{name}_joint_bin"
-    return {
+    variables: Variables = {
         f"{name}_joint": (
             tuple(grid.coordinates())[:2],
             grid.joint,
             {"units": "1", "long_name": "joint bin that the bin belongs to"},
         ),
-        f"{name}_moment_sum": (
-            (joint,),
-            total,
-            {"units": "1", "long_name": "sum over snapshots of the counts in a joint bin"},
-        ),
-        f"{name}_moment_product": (
-            (joint, f"{joint}_other"),
-            product,
-            {"units": "1", "long_name": "sum over snapshots of products of two joint bins' counts"},
-        ),
     }
+    for kind, words in (("moment", "counts"), ("residual", "counts less expected counts")):
+        if f"{kind}_sum" not in sums:
+            continue
+        variables[f"{name}_{kind}_sum"] = (
+            (joint,),
+            sums[f"{kind}_sum"],
+            {"units": "1", "long_name": f"sum over snapshots of the {words} in a joint bin"},
+        )
+        variables[f"{name}_{kind}_product"] = (
+            (joint, f"{joint}_other"),
+            sums[f"{kind}_product"],
+            {
+                "units": "1",
+                "long_name": f"sum over snapshots of products of two joint bins' {words}",
+            },
+        )
+    return variables
 
 
 def _unit(run: RunFile, power: int | str | None) -> str:

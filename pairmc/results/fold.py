@@ -10,7 +10,7 @@ import numpy as np
 import xarray as xr
 
 from pairmc.errors import PairmcError
-from pairmc.physics.snapshots import Snapshots, widened
+from pairmc.physics.snapshots import widened
 from pairmc.results.collect import Collected
 from pairmc.results.dataset import build_dataset
 from pairmc.results.load import load
@@ -91,13 +91,15 @@ def _compare(path: Path, dataset: xr.Dataset, blocks: Iterator[Block]) -> None:
     with netCDF4.Dataset(path) as file:
         file.set_auto_mask(False)
         start = 0
-        for _, where, which in blocks:
-            width = len(file.dimensions["particle"])
-            position, component = widened(Snapshots(where, which), width)
-            rows = slice(start, start + len(position))
-            if not (
-                np.array_equal(file["position"][rows], position, equal_nan=True)
-                and np.array_equal(file["component"][rows], component)
+        for _, narrow in blocks:
+            block = widened(narrow, len(file.dimensions["particle"]))
+            rows = slice(start, start + len(block.position))
+            wanted = {"position": block.position, "component": block.component}
+            if block.twist.size:
+                wanted["snapshot_twist"] = block.twist
+            if not all(
+                np.array_equal(file[name][rows], part, equal_nan=True)
+                for name, part in wanted.items()
             ):
                 raise PairmcError("snapshots were not read back from the disk as they were written")
             start = rows.stop

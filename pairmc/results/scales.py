@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+from collections.abc import Callable
 from typing import Any
 
 import numpy as np
 from numpy.typing import NDArray
 
 from pairmc.physics import thermal
-from pairmc.physics.gas import Gas, fermi_wavenumber
+from pairmc.physics.gas import Gas
+from pairmc.physics.theory.energy import bulk_per_particle
 from pairmc.runfile.run import RunFile
 from pairmc.units import HARTREE
 
@@ -27,8 +29,16 @@ def energy_unit(gas: Gas) -> str:
     return gas.units.energy or "1"
 
 
-def scale_variables(run: RunFile) -> Variables:
-    """Return k_F, E_F, T_F, densities, populations, box sides and r_s, each with its unit."""
+def scale_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
+    """Return k_F, E_F, T_F, densities, populations, box sides and r_s, each with its unit.
+
+    Parameters
+    ----------
+    run
+        The run.
+    energies : array (component,)
+        Exact kinetic energy of each component, in ħ²/(m · length²).
+    """
     gas, units = run.gas, run.gas.units
     spin = ("spin",)
     variables: Variables = {
@@ -66,16 +76,33 @@ def scale_variables(run: RunFile) -> Variables:
             {"units": units.udunits(1), "long_name": "side of the periodic box"},
         ),
     }
-    energies, temperatures = gas.fermi_energies, gas.fermi_temperatures
-    if energies is not None:
+    if run.rotation:
+        variables["rotation"] = (
+            (),
+            run.rotation,
+            {"units": "degree", "long_name": "rotation of all spins before they are detected"},
+        )
+        variables["detected_population"] = (
+            spin,
+            np.array(run.system().detected_populations),
+            {"units": "1", "long_name": "mean number of particles detected as the component"},
+        )
+    if run.twist != "averaged" and any(run.twist):
+        variables["twist"] = (
+            ("axis",),
+            np.array(run.twist),
+            {"units": "1", "long_name": "twist of the boundary conditions in units of 2 pi"},
+        )
+    fermi_energies, temperatures = gas.fermi_energies, gas.fermi_temperatures
+    if fermi_energies is not None:
         about = {"units": energy_unit(gas), "long_name": "Fermi energy of the component"}
         if not units.energy:
             about["comment"] = "in units of hbar^2 / (mass * length unit^2)"
-        variables["fermi_energy"] = (spin, np.array(energies), about)
+        variables["fermi_energy"] = (spin, np.array(fermi_energies), about)
     if temperatures is not None:
         about = {"units": "K", "long_name": "Fermi temperature of the component"}
         variables["fermi_temperature"] = (spin, np.array(temperatures), about)
-    variables |= _warm_variables(run)
+    variables |= _warm_variables(run, energies)
     if gas.polarisation is not None:
         variables["polarisation"] = (
             (),
@@ -85,7 +112,7 @@ def scale_variables(run: RunFile) -> Variables:
     return variables
 
 
-def _warm_variables(run: RunFile) -> Variables:
+def _warm_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
     """Return temperature, chemical potential and energies: of this system and of the infinite one.
 
     Chemical potentials of fixed populations are those of the infinite system.
@@ -95,12 +122,6 @@ def _warm_variables(run: RunFile) -> Variables:
     about = {"units": energy_unit(gas)}
     if gas.units.kinetic is None:
         about = {"units": gas.units.udunits(-2), "comment": "times hbar^2 / mass is the energy"}
-    means = [occupation.mean() for occupation in run.system().occupations]
-    levels = [occupation.orbitals.energies for occupation in run.system().occupations]
-    energies = [
-        float(mean @ level) / population
-        for mean, level, population in zip(means, levels, gas.populations, strict=True)
-    ]
     spin = ("spin",)
     variables: Variables = {
         "reduced_temperature": (
@@ -110,27 +131,27 @@ def _warm_variables(run: RunFile) -> Variables:
         ),
         "energy_per_particle": (
             spin,
-            scale * np.array(energies),
+            scale * _per_particle(energies, gas),
             about | {"long_name": "kinetic energy per particle, exact for this finite system"},
         ),
         "energy_per_particle_bulk": (
             spin,
-            scale * np.array([_bulk_energy(gas, density) for density in gas.densities]),
+            scale * bulk_per_particle(gas),
             about | {"long_name": "kinetic energy per particle of the infinite system"},
         ),
     }
     if T == 0:
         return variables
-    potentials = [thermal.chemical_potential(gas.dimension, n, T) for n in gas.densities]
-    limits = [thermal.long_wavelength_structure_factor(gas.dimension, n, T) for n in gas.densities]
+    potentials = _where_filled(gas, thermal.chemical_potential)
+    limits = _where_filled(gas, thermal.long_wavelength_structure_factor)
     variables["chemical_potential_bulk"] = (
         spin,
-        scale * np.array(potentials),
+        scale * potentials,
         about | {"long_name": "chemical potential of the infinite system"},
     )
     variables["structure_factor_limit_bulk"] = (
         spin,
-        np.array(limits),
+        limits,
         {"units": "1", "long_name": "S(q -> 0) of the component in the infinite system"},
     )
     if gas.temperature is not None:
@@ -139,9 +160,18 @@ def _warm_variables(run: RunFile) -> Variables:
     return variables
 
 
-def _bulk_energy(gas: Gas, density: float) -> float:
-    """Return the energy per particle of the infinite system, in ħ²/(m · length²)."""
-    if gas.thermal_energy > 0:
-        return thermal.energy_per_particle(gas.dimension, density, gas.thermal_energy)
-    d = gas.dimension
-    return d / (d + 2) * 0.5 * fermi_wavenumber(d, density) ** 2
+def _per_particle(totals: NDArray[np.float64], gas: Gas) -> NDArray[np.float64]:
+    """Divide by the populations; NaN where a component has no particles."""
+    populations = np.array(gas.populations, dtype=np.float64)
+    populations[populations == 0] = np.nan
+    return np.asarray(totals / populations)
+
+
+def _where_filled(gas: Gas, function: Callable[[int, float, float], float]) -> NDArray[np.float64]:
+    """Return a function of the infinite gas for each component; NaN where it has no particles."""
+    return np.array(
+        [
+            function(gas.dimension, density, gas.thermal_energy) if density > 0 else np.nan
+            for density in gas.densities
+        ]
+    )

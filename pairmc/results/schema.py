@@ -2,14 +2,18 @@
 
 from __future__ import annotations
 
+from pairmc.runfile.run import RunFile
+
 # major.minor: a newer minor opens with a warning, a newer major is refused.
 SCHEMA = (1, 0)
 
 SCHEMA_ATTRIBUTE = "pairmc_schema"
 CONVENTIONS = "CF-1.11"
 
-# Marks the variables that hold the kept snapshots; they are written part by part.
-KEPT = ("position", "component", "particle_count", "snapshot_batch")
+TWIST_ATTRIBUTES = {
+    "units": "1",
+    "long_name": "twist of the boundary conditions in the snapshot, in units of 2 pi",
+}
 
 NORMALISATION = (
     "pair correlations are normalised by the densities of the run: "
@@ -18,14 +22,33 @@ NORMALISATION = (
 )
 
 
-def ensemble_words(ensemble: str, warm: bool) -> str:
-    """Return the ensemble in words."""
+def ensemble_words(run: RunFile) -> str:
+    """Return the ensemble in words, and what is done to the spins."""
+    turned = (
+        f"; all spins are rotated by {run.rotation:g} degrees before they are detected, so that "
+        "detected populations fluctuate, and pair correlations are normalised by their means"
+    )
+    return _ensemble(run) + (turned if run.rotation else "")
+
+
+def _ensemble(run: RunFile) -> str:
+    warm, fixed = run.gas.thermal_energy > 0, run.gas.ensemble == "canonical"
+    if run.twist == "averaged":
+        warmth = "at a temperature" if warm else "zero temperature"
+        if fixed:
+            return f"canonical: fixed populations, a twist for each snapshot, {warmth}"
+        return (
+            "grand canonical, at fixed Fermi wave number: populations follow the twist of each "
+            f"snapshot, at the chemical potential of the infinite system, {warmth}; pair "
+            "correlations are normalised by mean densities, so that unlike components have "
+            "<N_s N_s'>/(<N_s><N_s'>), not 1"
+        )
     if not warm:
         return (
-            f"{ensemble}: fixed populations; zero temperature; a partly filled last level is an "
-            "equal mixture of its fillings"
+            f"{run.gas.ensemble}: fixed populations; zero temperature; a partly filled last level "
+            "is an equal mixture of its fillings"
         )
-    if ensemble == "canonical":
+    if fixed:
         return "canonical: fixed populations at a temperature"
     return "grand canonical: populations fluctuate about their means, at a temperature"
 

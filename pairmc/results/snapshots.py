@@ -10,6 +10,7 @@ import xarray as xr
 from pairmc.errors import InputError, Problem
 from pairmc.physics.snapshots import joined
 from pairmc.results.scales import component_labels
+from pairmc.results.schema import TWIST_ATTRIBUTES
 from pairmc.runfile.read import read_run_file
 from pairmc.runfile.run import RunFile
 from pairmc.running.batch import make_sampler
@@ -37,7 +38,8 @@ def draw_snapshots(
     xarray.Dataset
         ``position`` (snapshot, particle, axis), float64 in length units, from 0 to the side;
         ``component`` (snapshot, particle), int8, an index into ``spin``; ``side`` (axis). Where
-        numbers fluctuate, places without a particle hold NaN and −1.
+        numbers fluctuate, places without a particle hold NaN and −1. Where every snapshot has a
+        twist of its own, ``snapshot_twist`` (snapshot, axis), in units of 2π.
 
     Raises
     ------
@@ -57,8 +59,12 @@ def draw_snapshots(
     together = joined(batches, known.gas.particles, known.gas.dimension)
     position, component = together.position * sides, together.component
     unit = known.gas.units.udunits(1)
+    twist = {}
+    if known.twist == "averaged":
+        twist["snapshot_twist"] = (("snapshot", "axis"), together.twist, TWIST_ATTRIBUTES)
     return xr.Dataset(
-        {
+        twist
+        | {
             "position": (
                 ("snapshot", "particle", "axis"),
                 position,

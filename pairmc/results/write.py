@@ -10,22 +10,23 @@ from typing import Any
 import netCDF4
 import numpy as np
 import xarray as xr
-from numpy.typing import NDArray
 
 from pairmc.files import write_whole
 from pairmc.physics.snapshots import NO_COMPONENT, Snapshots, widened
+from pairmc.results.schema import TWIST_ATTRIBUTES
 from pairmc.runfile.run import RunFile
 from pairmc.running.batch import kept_in_batch
 from pairmc.running.parts import Parts
 
-Block = tuple[int, NDArray[np.float32], NDArray[np.int8]]
+# A batch and those of its snapshots that are kept, positions in length units.
+Block = tuple[int, Snapshots]
 
 # Rows of kept snapshots in one chunk of the file hold about this many bytes.
 _CHUNK_BYTES = 1_000_000
 
 
 def kept_in_parts(run: RunFile, parts: Parts, batches: range) -> Iterator[Block]:
-    """Yield the kept snapshots of finished batches: number, position in length units, component."""
+    """Yield the kept snapshots of finished batches."""
     sides = np.array(run.system().sides)
     for batch in batches:
         if kept_in_batch(run, batch) == 0:
@@ -33,7 +34,8 @@ def kept_in_parts(run: RunFile, parts: Parts, batches: range) -> Iterator[Block]
         arrays, _ = parts.read(batch)
         position = (arrays["kept.position"].astype(np.float64) * sides).astype(np.float32)
         position[position >= sides.astype(np.float32)] = 0.0
-        yield batch, position, arrays["kept.component"]
+        twist = arrays.get("kept.twist", np.empty((0, 0)))
+        yield batch, Snapshots(position, arrays["kept.component"], twist)
 
 
 def kept_in_file(path: Path, run: RunFile) -> Iterator[Block]:
@@ -53,7 +55,10 @@ def kept_in_file(path: Path, run: RunFile) -> Iterator[Block]:
             position = file["position"][first:last]
             if not same_unit:
                 position = (position * factors).astype(np.float32)
-            yield int(batch), position, file["component"][first:last]
+            twist = np.empty((0, 0))
+            if "snapshot_twist" in file.variables:
+                twist = file["snapshot_twist"][first:last]
+            yield int(batch), Snapshots(position, file["component"][first:last], twist)
 
 
 def write_result(
@@ -99,8 +104,10 @@ def write_result(
         with netCDF4.Dataset(temporary, "a") as file:
             for name, edges in bounds.items():
                 file[name].setncattr("bounds", edges)
+            for name in _labels(dataset):
+                file[name].setncattr("_Encoding", "utf-8")
             if kept:
-                widest = max(component.shape[1] for _, _, component in blocks())
+                widest = max(block.component.shape[1] for _, block in blocks())
                 _append_kept(file, run, kept, widest, blocks())
 
     write_whole(path, write, check)
@@ -118,6 +125,11 @@ def _without_bounds(dataset: xr.Dataset) -> tuple[xr.Dataset, dict[str, str]]:
             bare[name].attrs = dict(dataset[name].attrs)
             bounds[str(name)] = bare[name].attrs.pop("bounds")
     return bare, bounds
+
+
+def _labels(dataset: xr.Dataset) -> list[str]:
+    """Return the variables that hold text; with an encoding named, readers give it as text."""
+    return [str(name) for name, part in dataset.variables.items() if part.dtype.kind == "S"]
 
 
 def encoding(dataset: xr.Dataset) -> dict[Any, dict[str, Any]]:
@@ -175,12 +187,16 @@ def _append_kept(
     batches = create(
         "snapshot_batch", "i8", ("snapshot",), units="1", long_name="batch of the snapshot"
     )
+    if run.twist == "averaged":
+        twist = create("snapshot_twist", "f8", ("snapshot", "axis"), **TWIST_ATTRIBUTES)
     start = 0
-    for batch, narrow_where, narrow_which in blocks:
-        where, which = widened(Snapshots(narrow_where, narrow_which), particles)
-        rows_here = slice(start, start + len(where))
-        position[rows_here] = where
-        component[rows_here] = which
-        count[rows_here] = np.count_nonzero(which != NO_COMPONENT, axis=1)
+    for batch, narrow in blocks:
+        block = widened(narrow, particles)
+        rows_here = slice(start, start + len(block.position))
+        position[rows_here] = block.position
+        component[rows_here] = block.component
+        count[rows_here] = np.count_nonzero(block.component != NO_COMPONENT, axis=1)
         batches[rows_here] = batch
-        start += len(where)
+        if block.twist.size:
+            twist[rows_here] = block.twist
+        start = rows_here.stop

@@ -7,6 +7,7 @@ from collections.abc import Iterator
 from math import isqrt
 
 from pairmc.physics.orbitals import nearest_closed
+from pairmc.runfile.fields import LARGEST_COMPONENT
 from pairmc.runfile.lines import Path
 from pairmc.runfile.models import (
     LARGEST_BATCHES,
@@ -43,6 +44,8 @@ def check(document: Document, refused: set[Path]) -> Iterator[Finding]:
         yield from check_scale(document.gas, in_gas)
         yield from check_temperature(document.gas, in_gas)
     yield from _check_axes(document)
+    if not {("gas", "particles"), ("spin", "rotation")} & {path[:2] for path in refused}:
+        yield from _check_spin(document)
     if not {("sampling", "snapshots"), ("sampling", "batches")} & refused:
         yield from _check_batches(document.sampling)
     observables = document.observables
@@ -60,7 +63,7 @@ def check_run(run: RunFile) -> Iterator[Finding]:
     """
     if run.gas.thermal_energy > 0:
         yield from _check_warm(run)
-    elif run.gas.ensemble == "grand-canonical":
+    elif run.gas.ensemble == "grand-canonical" and run.twist != "averaged":
         yield from _check_cold_grand_canonical(run)
 
 
@@ -81,6 +84,8 @@ def _check_warm(run: RunFile) -> Iterator[Finding]:
 
     axes = tuple(Periodic(side) for side in gas.box(run.sides))
     for name, population in zip(gas.components, gas.populations, strict=True):
+        if population == 0:
+            continue
         orbitals = orbital_bound(axes, population, gas.thermal_energy)
         if orbitals * population > LARGEST_TABLE:
             yield Finding(
@@ -105,7 +110,8 @@ def _check_cold_grand_canonical(run: RunFile) -> Iterator[Finding]:
                     f"an open shell of {occupation.population} at temperature 0 with "
                     'ensemble = "grand-canonical"',
                     f"a closed shell there, such as {near}",
-                    'close the shell, set a temperature, or set ensemble = "canonical"',
+                    'close the shell, set a temperature, set ensemble = "canonical", or let '
+                    'populations follow the twist with twist = "averaged"',
                 ),
             )
 
@@ -126,7 +132,7 @@ def _check_required(gas: GasTable, refused: set[str]) -> Iterator[Finding]:
 def _check_axes(document: Document) -> Iterator[Finding]:
     """Yield complaints about lists that have not one entry per axis."""
     dimension, box = document.gas.dimension, document.confinement
-    for key, given in (("axes", box.axes), ("sides", box.sides)):
+    for key, given in (("axes", box.axes), ("sides", box.sides), ("twist", box.twist)):
         if dimension is not None and isinstance(given, tuple) and len(given) != dimension:
             wanted = "1 entry" if dimension == 1 else f"{dimension} entries"
             yield Finding(
@@ -137,6 +143,43 @@ def _check_axes(document: Document) -> Iterator[Finding]:
                     "give one entry per axis, or leave it out",
                 ),
             )
+
+
+def _check_spin(document: Document) -> Iterator[Finding]:
+    """Yield complaints about rotated spins, and about components without particles."""
+    particles, rotation = document.gas.particles or {}, document.spin.rotation
+    empty = [name for name, population in particles.items() if population == 0]
+    if rotation != 0 and particles and len(particles) != 2:
+        yield Finding(
+            ("spin", "rotation"),
+            Refusal(
+                f"a rotation of {len(particles)} component{'s' * (len(particles) != 1)}",
+                "two components, of which one may have no particles",
+                "name a second component, such as particles = { up = 49, down = 0 }",
+            ),
+        )
+    elif empty and (rotation == 0 or len(empty) == len(particles)):
+        everyone = len(empty) == len(particles)
+        yield Finding(
+            ("gas", "particles", empty[0]),
+            Refusal(
+                "0",
+                f"a whole number from 1 to {LARGEST_COMPONENT}, or 0 in one of two components "
+                "whose spins are rotated",
+                "give it particles"
+                if everyone
+                else "leave the component out, or set [spin] rotation",
+            ),
+        )
+    elif empty and rotation == 180:
+        yield Finding(
+            ("spin", "rotation"),
+            Refusal(
+                "180 degrees of a gas of one component",
+                "an angle at which both components are detected",
+                "leave the rotation out and name the other component",
+            ),
+        )
 
 
 def _check_batches(sampling: SamplingTable) -> Iterator[Finding]:

@@ -12,6 +12,7 @@ from collections.abc import Mapping
 from dataclasses import asdict
 from typing import Any
 
+from pairmc.physics.system import Twist
 from pairmc.runfile.run import RunFile
 
 # Raised whenever the same run draws other snapshots than before.
@@ -49,11 +50,11 @@ def canonical(run: RunFile) -> dict[str, Any]:
             "temperature": _digits(gas.reduced_temperature) if gas.thermal_energy else "0",
             "ensemble": gas.ensemble,
         },
-        "spin": {"rotation": "0"},
+        "spin": {"rotation": _digits(run.rotation) if run.rotation else "0"},
         "confinement": {
             "axes": ["periodic"] * gas.dimension,
             "sides": [_digits(side / run.sides[0]) for side in run.sides],
-            "twist": "none",
+            "twist": _twist(run.twist),
         },
         "sampling": {
             "sampler": run.sampler,
@@ -104,6 +105,13 @@ def _flat(table: Mapping[str, Any], above: str = "") -> dict[str, object]:
         else:
             values[above + key] = value
     return values
+
+
+def _twist(twist: Twist) -> str | list[str]:
+    """Return the twist in one spelling; a vector of zeros is none."""
+    if twist == "averaged":
+        return "averaged"
+    return [_digits(float(part)) for part in twist] if any(twist) else "none"
 
 
 def _digits(number: float) -> str:

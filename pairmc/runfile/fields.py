@@ -7,7 +7,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Callable, Mapping
-from math import isfinite
+from math import isfinite, pi
 from typing import Any
 
 from pairmc.runfile.problems import (
@@ -24,6 +24,9 @@ LARGEST_COMPONENT = 20_000
 MOST_COMPONENTS = 20
 # Far beyond any gas, and far from where squares and cubes overflow.
 SMALLEST, LARGEST = 1e-30, 1e30
+
+# Digits after the point of an angle in degrees, so that π/2 rad and 90 deg are one angle.
+_ANGLE_DIGITS = 10
 
 _COMPONENT_NAME = re.compile(r"[A-Za-z][A-Za-z0-9_]{0,15}")
 _AXES = ("periodic", "hard-wall", "harmonic", "lattice")
@@ -109,10 +112,11 @@ def particles(value: Any) -> dict[str, int]:
         refusals.append(Refusal(f"{len(value)} components", f"at most {MOST_COMPONENTS}"))
     gigabytes = 16 * LARGEST_COMPONENT**2 / 1e9
     population = integer(
-        1,
+        0,
         LARGEST_COMPONENT,
         "the orbitals of N particles of one component fill a matrix of about 16 N² bytes, "
         f"{gigabytes:.1f} GB at this limit",
+        f"a whole number from 1 to {LARGEST_COMPONENT}",
     )
     for name, number in value.items():
         if not _COMPONENT_NAME.fullmatch(name):
@@ -170,14 +174,14 @@ def temperature(value: Any) -> Quantity:
     return quantity
 
 
-def rotation(value: Any) -> Quantity:
-    """Read the rotation of the spins, which must be zero."""
-    allowed = '0 or "0 deg"'
+def rotation(value: Any) -> float:
+    """Read the rotation of the spins: degrees, from 0 up to but not 360."""
+    allowed = '0, or an angle with its unit, such as "60 deg" or "1.2 rad"'
     quantity = _quantity(value, (PLAIN, ANGLE), allowed)
-    if quantity.number != 0:
-        advice = "leave it out to measure along the axis the components are named by"
-        raise not_yet(value, allowed, advice, "a rotation")
-    return quantity
+    if quantity.plain and quantity.number != 0:
+        raise refuse(value, allowed, f'write "{value} deg" for degrees')
+    degrees = quantity.number if quantity.unit == "deg" else quantity.value * 180.0 / pi
+    return round(degrees % 360.0, _ANGLE_DIGITS) % 360.0
 
 
 def axes(value: Any) -> str | tuple[str, ...]:
@@ -205,12 +209,28 @@ def sides(value: Any) -> tuple[float, ...]:
     return ratio
 
 
-def twist(value: Any) -> str:
-    """Read the twist of the boundary conditions, which must be "none"."""
-    advice = 'set twist = "none" and choose closed shells to keep effects of the box small'
-    if isinstance(value, list) and value and all(_number(part) is not None for part in value):
-        raise not_yet(value, '"none"', advice, "a twist vector")
-    return choice("none", {"averaged": advice})(value)
+def twist(value: Any) -> tuple[float, ...] | str:
+    """Read the twist of the boundary conditions: "none", "averaged", or one number an axis.
+
+    Numbers are in units of 2π, from −½ to ½; ½ is the same as −½ and becomes it.
+    """
+    allowed = '"none", "averaged", or a list of numbers from -0.5 to 0.5, one per axis'
+    if isinstance(value, str):
+        if value in ("none", "averaged"):
+            return value
+        raise refuse(value, allowed, did_you_mean(value, ("none", "averaged")))
+    if not isinstance(value, list) or not value:
+        raise refuse(value, allowed)
+    numbers = []
+    for part in value:
+        number = _number(part)
+        if number is None:
+            raise refuse(value, allowed)
+        if abs(number) > 0.5:
+            advice = "twists are in units of 2π, and whole numbers change nothing"
+            raise refuse(value, allowed, advice)
+        numbers.append(-0.5 if number == 0.5 else number + 0.0)
+    return tuple(numbers)
 
 
 def kept(most: int) -> Callable[[Any], int | None]:

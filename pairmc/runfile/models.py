@@ -68,7 +68,7 @@ class GasTable(_Table):
 class SpinTable(_Table):
     """``[spin]``: what is done to the spins before they are measured."""
 
-    rotation: Annotated[Quantity, PlainValidator(fields.rotation)] = Quantity(0.0)
+    rotation: Annotated[float, PlainValidator(fields.rotation)] = 0.0
 
 
 class ConfinementTable(_Table):
@@ -76,7 +76,7 @@ class ConfinementTable(_Table):
 
     axes: Annotated[str | tuple[str, ...], PlainValidator(fields.axes)] = "periodic"
     sides: Annotated[tuple[float, ...] | None, PlainValidator(fields.sides)] = None
-    twist: Annotated[str, PlainValidator(fields.twist)] = "none"
+    twist: Annotated[str | tuple[float, ...], PlainValidator(fields.twist)] = "none"
 
 
 class SamplingTable(_Table):

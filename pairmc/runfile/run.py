@@ -6,11 +6,12 @@ import operator
 from collections.abc import Mapping
 from dataclasses import dataclass, field, replace
 from functools import lru_cache
+from math import radians
 
 from pairmc.errors import InputError, Problem
 from pairmc.physics.gas import Gas
 from pairmc.physics.observables.pair_correlation_settings import Settings as PairCorrelationSettings
-from pairmc.physics.system import System, build_system
+from pairmc.physics.system import System, Twist, build_system
 from pairmc.runfile.models import SEED_LIMIT, Document
 from pairmc.runfile.problems import value_in_words
 from pairmc.runfile.scale import settle_gas, settle_scale
@@ -33,6 +34,12 @@ class RunFile:
         The gas, in the run's units.
     sides
         Ratio of the sides of the box, one number per axis.
+    twist
+        Twist of the boundary conditions in units of 2π, one number per axis, from −½ up to but not
+        ½; or ``"averaged"``: every snapshot has its own.
+    rotation
+        Angle in degrees, from 0 up to but not 360, by which all spins are turned before they are
+        detected.
     sampler
         ``"direct"``.
     snapshots, batches
@@ -52,6 +59,8 @@ class RunFile:
     text: str
     gas: Gas
     sides: tuple[float, ...]
+    twist: Twist
+    rotation: float
     sampler: str
     snapshots: int
     batches: int
@@ -67,7 +76,7 @@ class RunFile:
 
     def system(self) -> System:
         """Return the gas in its box with its filled orbitals; built once for equal gases."""
-        return _system(self.gas, self.sides)
+        return _system(self.gas, self.sides, self.twist, radians(self.rotation))
 
     def with_seed(self, seed: int) -> RunFile:
         """Return the same run with another seed.
@@ -137,6 +146,8 @@ def build_run(document: Document, path: str, text: str) -> RunFile:
         text=text,
         gas=gas,
         sides=document.confinement.sides or (1.0,) * gas.dimension,
+        twist=_twist(document.confinement.twist, gas.dimension),
+        rotation=document.spin.rotation,
         sampler=sampling.sampler,
         snapshots=sampling.snapshots,
         batches=sampling.batches,
@@ -145,6 +156,13 @@ def build_run(document: Document, path: str, text: str) -> RunFile:
         observables={"pair_correlation": PairCorrelationSettings(bins)},
         mass_kilogram=scale.mass_kilogram,
     )
+
+
+def _twist(given: str | tuple[float, ...], dimension: int) -> Twist:
+    """Return the twist that was written."""
+    if isinstance(given, tuple):
+        return given
+    return "averaged" if given == "averaged" else (0.0,) * dimension
 
 
 def _temperature(gas: Gas) -> str:
@@ -156,8 +174,8 @@ def _temperature(gas: Gas) -> str:
 
 
 @lru_cache(maxsize=8)
-def _system(gas: Gas, sides: tuple[float, ...]) -> System:
-    return build_system(gas, sides)
+def _system(gas: Gas, sides: tuple[float, ...], twist: Twist, rotation: float) -> System:
+    return build_system(gas, sides, twist, rotation)
 
 
 def _title(gas: Gas) -> str:

@@ -16,6 +16,7 @@ from pairmc.physics.observables import registry
 from pairmc.physics.sampling.direct import DirectSampler
 from pairmc.physics.snapshots import Snapshots, joined
 from pairmc.physics.system import System
+from pairmc.physics.theory import energy, singlet_fraction
 from pairmc.runfile.digest import digest
 from pairmc.runfile.run import RunFile
 from pairmc.streams import generator
@@ -87,6 +88,10 @@ def run_batch(run: RunFile, batch: int, stop: Callable[[], bool] = lambda: False
         ``OBSERVABLE.TALLY`` for every tally, ``population_sum`` (component) the particles of all
         snapshots together, ``kept.position`` (snapshot, particle, axis) as
         fractions of the sides, float32 in [0, 1), and ``kept.component`` (snapshot, particle).
+        Where every snapshot has a twist of its own also ``kept.twist`` (snapshot, axis) and
+        ``energy_ratio`` (component), the exact kinetic energy at the twists of all snapshots as a
+        multiple of the infinite system's, their mean; of two components also ``singlet_pairs``
+        (separation), the expected number of pairs in the spin singlet.
 
     Raises
     ------
@@ -97,8 +102,12 @@ def run_batch(run: RunFile, batch: int, stop: Callable[[], bool] = lambda: False
     sampler = make_sampler(run, batch)
     modules = {name: registry.observable(name) for name in run.observables}
     grids = {name: modules[name].grid(run.observables[name], system) for name in modules}
-    tallies = {name: modules[name].empty(grids[name]) for name in modules}
+    averaged = bool(system.averaged)
+    tallies = {name: modules[name].empty(grids[name], averaged) for name in modules}
     populations = np.zeros(len(run.gas.components), dtype=np.int64)
+    energies = np.zeros(len(run.gas.components))
+    separations, two = grids["pair_correlation"], len(run.gas.components) == 2
+    singlets = np.zeros(separations.bins)
     keep = kept_in_batch(run, batch)
     kept: list[Snapshots] = []
     done = 0
@@ -108,20 +117,38 @@ def run_batch(run: RunFile, batch: int, stop: Callable[[], bool] = lambda: False
         count = min(snapshots_at_a_time(run), run.batch_size - done)
         snapshots = sampler.draw(count)
         for name, module in modules.items():
-            module.tally(snapshots, grids[name], tallies[name])
+            expected = None
+            if averaged:
+                theory = registry.theory(name)
+                expected = theory.at_twists(system, grids[name], snapshots.twist)
+            module.tally(snapshots, grids[name], tallies[name], expected)
+        if averaged:
+            energies += energy.at_twists(system, snapshots.twist).sum(axis=0)
+            if two:
+                pairs = singlet_fraction.pairs_at_twists(system, separations, snapshots.twist)
+                singlets += pairs.sum(axis=0)
         for label in range(len(populations)):
             populations[label] += np.count_nonzero(snapshots.component == label)
         if done < keep:
-            wanted = slice(keep - done)
-            kept.append(Snapshots(snapshots.position[wanted], snapshots.component[wanted]))
+            kept.append(snapshots.first(keep - done))
         done += count
     arrays = {f"{name}.{key}": part for name in tallies for key, part in tallies[name].items()}
-    return arrays | {"population_sum": populations} | _stack(kept, system)
+    arrays["population_sum"] = populations
+    if averaged:
+        bulk = np.array(run.gas.populations) * energy.bulk_per_particle(run.gas)
+        arrays["energy_ratio"] = energies / (run.batch_size * bulk)
+        if two:
+            arrays["singlet_pairs"] = singlets
+    return arrays | _stack(kept, system)
 
 
 def _stack(kept: list[Snapshots], system: System) -> Arrays:
-    """Return the kept snapshots of a batch as two arrays."""
+    """Return the kept snapshots of a batch as arrays."""
     together = joined(kept, system.gas.particles, system.gas.dimension)
     position = together.position.astype(np.float32)
     position[position >= 1.0] = 0.0  # rounded up to the other face of the box
-    return {"kept.position": position, "kept.component": together.component}
+    arrays: Arrays = {"kept.position": position, "kept.component": together.component}
+    if system.averaged:
+        shape = (len(position), system.gas.dimension)
+        arrays["kept.twist"] = together.twist.reshape(shape)
+    return arrays

@@ -41,7 +41,7 @@ def count_plainly(snapshots: Snapshots, system: System, edges: np.ndarray) -> np
     rows = [(a, b) for a in range(len(labels)) for b in range(a, len(labels))]
     images = np.array(np.meshgrid(*[[-1, 0, 1]] * len(sides))).reshape(len(sides), -1).T * sides
     counts = np.zeros((len(snapshots.position), len(rows), len(edges) - 1), dtype=np.int64)
-    for s, (position, component) in enumerate(zip(*snapshots, strict=True)):
+    for s, (position, component) in enumerate(zip(*snapshots[:2], strict=True)):
         for i, j in combinations(range(len(position)), 2):
             displacement = (position[i] - position[j]) * sides + images
             separation = np.sqrt((displacement**2).sum(axis=1)).min()

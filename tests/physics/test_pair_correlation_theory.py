@@ -16,7 +16,9 @@ from scipy.special import j1
 
 from pairmc.physics.grids import SeparationGrid, separation_grid
 from pairmc.physics.observables import pair_correlation
-from pairmc.physics.theory.pair_correlation import bulk, expected, pair_weights
+from pairmc.physics.system import System
+from pairmc.physics.theory.overlaps import by_length, overlaps
+from pairmc.physics.theory.pair_correlation import bulk, expected
 from pairmc.statistics import t_quantile
 from tests.oracles import enumeration, pair_density, running_integral
 from tests.physics.gases import BRICK, FLAT, make_sampler, make_system, shells, with_wrong_orbital
@@ -42,6 +44,12 @@ OPEN = [
     ((1, 1, 1), 6),
     ((1, 1, 2), 10),
 ]
+
+
+def pair_weights(system: System) -> tuple[np.ndarray, np.ndarray]:
+    """Return the differences of the first component's orbitals, and how often each occurs."""
+    wavenumbers, sums = by_length(system.axes, overlaps(system.occupations[0])[None])
+    return wavenumbers, sums[0]
 
 
 def like(ratio: tuple, population: int, edges: np.ndarray | None = None) -> tuple:
@@ -255,7 +263,7 @@ class TestPairWeights:
     @pytest.mark.parametrize(("ratio", "population"), CLOSED + OPEN)
     def test_add_up_to_all_ordered_pairs(self, ratio, population):
         system = make_system(ratio, (population,))
-        wavenumbers, weights = pair_weights(system, system.occupations[0])
+        wavenumbers, weights = pair_weights(system)
         assert weights.sum() == pytest.approx(population * (population - 1), rel=1e-12)
         assert np.all(np.diff(wavenumbers) > 0.0)
         assert wavenumbers[0] > 0.0
@@ -274,7 +282,7 @@ class TestPairWeights:
     def test_structure_factor(self, dimension, population, length, directions, value):
         """S(q) = 1 − #{k, k + q both filled}/N, and `directions` vectors have this length."""
         system = make_system((1,) * dimension, (population,))
-        wavenumbers, weights = pair_weights(system, system.occupations[0])
+        wavenumbers, weights = pair_weights(system)
         steps = wavenumbers * system.sides[0] / (2 * np.pi)
         (weight,) = weights[np.abs(steps - length) < 1e-9]
         assert 1 - weight / population / directions == pytest.approx(float(value), abs=1e-12)
@@ -282,14 +290,14 @@ class TestPairWeights:
     def test_structure_factor_of_a_ring(self):
         # min(m, N)/N: Diaconis & Evans, Trans. AMS 353, 2615 (2001).
         system = make_system((1,), (11,))
-        wavenumbers, weights = pair_weights(system, system.occupations[0])
+        wavenumbers, weights = pair_weights(system)
         assert wavenumbers * system.sides[0] / (2 * np.pi) == pytest.approx(np.arange(1, 11))
         assert 1 - weights / 22 == pytest.approx(np.arange(1, 11) / 11)
 
     def test_of_an_open_shell_by_listing(self):
         """Four particles of a square fill three of four waves round the first."""
         system = make_system((1, 1), (4,))
-        wavenumbers, weights = pair_weights(system, system.occupations[0])
+        wavenumbers, weights = pair_weights(system)
         squares = np.rint((wavenumbers * system.sides[0] / (2 * np.pi)) ** 2)
         # ordered pairs: 3 with the first; of the three pairs of the last level one opposite
         found = dict(zip(squares.tolist(), weights.tolist(), strict=True))

@@ -40,9 +40,8 @@ def collected(long_run: RunFile) -> Collected:
 def judge(run: RunFile, collected: Collected, expected: dict[str, np.ndarray]) -> Audit:
     grid = pair_correlation.grid(run.observables["pair_correlation"], run.system())
     tallies = collected.tallies["pair_correlation"]
-    return audit(
-        pair_correlation, grid, tallies.stacked(), tallies.moments(run.snapshots), expected
-    )
+    counts = run.batch_size * pair_correlation.mean_counts(expected, grid)
+    return audit(grid, tallies.stacked(), tallies.moments(run.snapshots), counts)
 
 
 def exact(run: RunFile) -> dict[str, np.ndarray]:

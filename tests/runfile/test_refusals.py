@@ -130,13 +130,12 @@ def test_refusals_in_gas(line: str, gas: str, problems: Problems) -> None:
 
 # Two lines added as lines 4 and 5, a table and a key in it: name, got, allowed, advice.
 IN_TABLES = {
-    "[spin]\nrotation = '90 deg'": (
+    "[spin]\nrotation = '0 um'": (
         "[spin] rotation",
-        '"90 deg"',
-        f'0 or "0 deg" (a rotation {LATER})',
-        "leave it out to measure along the axis the components are named by",
+        '"0 um" (a length)',
+        '0, or an angle with its unit, such as "60 deg" or "1.2 rad"',
+        "",
     ),
-    "[spin]\nrotation = '0 um'": ("[spin] rotation", '"0 um" (a length)', '0 or "0 deg"', ""),
     "[confinement]\naxes = 'hard-wall'": (
         "[confinement] axes",
         '"hard-wall"',
@@ -191,19 +190,12 @@ IN_TABLES = {
         "sides of which none is more than 1000 times another",
         "",
     ),
-    "[confinement]\ntwist = 'averaged'": (
+    "[confinement]\ntwist = 'random'": (
         "[confinement] twist",
-        '"averaged"',
-        f'"none" ("averaged" {LATER})',
-        'set twist = "none" and choose closed shells to keep effects of the box small',
+        '"random"',
+        '"none", "averaged", or a list of numbers from -0.5 to 0.5, one per axis',
+        "",
     ),
-    "[confinement]\ntwist = [0.25, 0]": (
-        "[confinement] twist",
-        "[0.25, 0]",
-        f'"none" (a twist vector {LATER})',
-        'set twist = "none" and choose closed shells to keep effects of the box small',
-    ),
-    "[confinement]\ntwist = 'random'": ("[confinement] twist", '"random"', '"none"', ""),
     "[sampling]\nsampler = 'metropolis'": (
         "[sampling] sampler",
         '"metropolis"',
@@ -401,7 +393,16 @@ def test_observables_of_later_releases_are_known(name: str, gas: str, problems: 
             ("", "an empty table", "one entry per spin component, such as { up = 49, down = 37 }"),
         ),
         ("49", ("", "49", "one entry per spin component, such as { up = 49, down = 37 }")),
-        ("{ up = 0 }", (".up", "0", COUNT)),
+        (
+            "{ up = 0 }",
+            (
+                ".up",
+                "0",
+                f"{COUNT}, or 0 in one of two components whose spins are rotated",
+                "give it particles",
+            ),
+        ),
+        ("{ up = -1 }", (".up", "-1", COUNT)),
         ("{ up = true }", (".up", "true", COUNT)),
         ("{ up = 3.0 }", (".up", "3.0", COUNT, "write 3, without a decimal point")),
         ("{ up = 3.5 }", (".up", "3.5", COUNT)),
@@ -471,7 +472,7 @@ r_s = 2
 dimension = 3
 total_density = "1 / um^2"
 fermi_wavenumber = "1 um"
-particles = { up = 0, down = 3, "a b" = 4 }
+particles = { up = -1, down = 3, "a b" = 4 }
 scan = 1
 """
     )

@@ -7,6 +7,8 @@ densities of the run, not by the number of pairs, so that like particles at fixe
 
 from __future__ import annotations
 
+from typing import Any
+
 import numpy as np
 from numpy.typing import NDArray
 
@@ -60,25 +62,44 @@ def grid(settings: Settings, system: System) -> SeparationGrid:
     return separation_grid(system, settings.bins)
 
 
-def empty(grid: SeparationGrid) -> dict[str, NDArray[np.int64]]:
+def empty(grid: SeparationGrid, averaged: bool = False) -> dict[str, NDArray[Any]]:
     """Return tallies of nothing.
+
+    Parameters
+    ----------
+    grid
+        The bins.
+    averaged
+        Every snapshot has a twist of its own, and so an expectation of its own.
 
     Returns
     -------
     dict
         ``count`` (pair, separation): unordered pairs in each bin. ``moment_sum`` (joint) and
         ``moment_product`` (joint, joint): Σx and Σxxᵀ over snapshots, x the pairs of one snapshot
-        in each joint bin. All int64, so that they add exactly in any order.
+        in each joint bin. All int64, so that they add exactly in any order. With `averaged` also,
+        float64, ``expected_count`` (pair, separation), the sum of expectations, and
+        ``residual_sum``, ``residual_product``: Σy and Σyyᵀ of y, x less its expectation.
     """
-    joint = grid.joint_bins
-    return {
-        "count": np.zeros((len(grid.pairs), grid.bins), dtype=np.int64),
+    joint, shape = grid.joint_bins, (len(grid.pairs), grid.bins)
+    tallies: dict[str, NDArray[Any]] = {
+        "count": np.zeros(shape, dtype=np.int64),
         "moment_sum": np.zeros(joint, dtype=np.int64),
         "moment_product": np.zeros((joint, joint), dtype=np.int64),
     }
+    if averaged:
+        tallies["expected_count"] = np.zeros(shape)
+        tallies["residual_sum"] = np.zeros(joint)
+        tallies["residual_product"] = np.zeros((joint, joint))
+    return tallies
 
 
-def tally(snapshots: Snapshots, grid: SeparationGrid, out: dict[str, NDArray[np.int64]]) -> None:
+def tally(
+    snapshots: Snapshots,
+    grid: SeparationGrid,
+    out: dict[str, NDArray[Any]],
+    expected: NDArray[np.float64] | None = None,
+) -> None:
     """Add the pairs of many snapshots to `out`.
 
     Parameters
@@ -89,11 +110,15 @@ def tally(snapshots: Snapshots, grid: SeparationGrid, out: dict[str, NDArray[np.
         The bins.
     out
         Tallies as made by `empty`; added to in place.
+    expected : array (snapshot, pair, separation)
+        Pair correlation expected of each snapshot, where that differs between them.
     """
     components = 1 + max(j for _, _, j in grid.pairs)
     pair_of = np.empty((components, components), dtype=np.int64)
     for index, (_, i, j) in enumerate(grid.pairs):
         pair_of[i, j] = pair_of[j, i] = index
+    single = 0 if expected is None else len(snapshots.position)
+    vectors = np.zeros((single, grid.joint_bins), dtype=np.int64)
     _tally_pairs(
         snapshots.position,
         snapshots.component,
@@ -104,7 +129,14 @@ def tally(snapshots: Snapshots, grid: SeparationGrid, out: dict[str, NDArray[np.
         out["count"],
         out["moment_sum"],
         out["moment_product"],
+        vectors,
     )
+    if expected is not None:
+        counts = expected * grid.ideal
+        residual = vectors - np.stack([grid.joint_sums(part) for part in counts])
+        out["expected_count"] += counts.sum(axis=0)
+        out["residual_sum"] += residual.sum(axis=0)
+        out["residual_product"] += residual.T @ residual
 
 
 @kernel
@@ -145,9 +177,21 @@ def _count_pairs(position, component, sides, pair_of, bins_per_length, count):
 
 @kernel
 def _tally_pairs(
-    position, component, sides, pair_of, bins_per_length, joint, total, moment_sum, moment_product
+    position,
+    component,
+    sides,
+    pair_of,
+    bins_per_length,
+    joint,
+    total,
+    moment_sum,
+    moment_product,
+    vectors,
 ):
-    """Add the pairs of all snapshots, and the moments of their joint bins."""
+    """Add the pairs of all snapshots, and the moments of their joint bins.
+
+    The joint bins of each snapshot are written to `vectors` where that has rows.
+    """
     count = np.empty(total.shape, dtype=np.int64)
     vector = np.empty(moment_sum.size, dtype=np.int64)
     for s in range(position.shape[0]):
@@ -158,6 +202,9 @@ def _tally_pairs(
             for b in range(total.shape[1]):
                 total[pair, b] += count[pair, b]
                 vector[joint[pair, b]] += count[pair, b]
+        if s < vectors.shape[0]:
+            for k in range(vector.size):
+                vectors[s, k] = vector[k]
         for k in range(vector.size):
             moment_sum[k] += vector[k]
             for l in range(vector.size):

@@ -78,3 +78,95 @@ def draw_independent(rng, mean, snapshots):
                 filled[s, count] = j
                 count += 1
     return filled
+
+
+@kernel
+def _occupation(energy, potential):
+    """Return the Fermi function of energies in units of k_B T."""
+    x = energy - potential
+    if x > 0.0:
+        small = np.exp(-x)
+        return small / (1.0 + small)
+    return 1.0 / (1.0 + np.exp(x))
+
+
+@kernel
+def _potential_near(energies, number):
+    """Return μ/k_B T at which the mean number is within ¼ of `number`, by bisection."""
+    low = energies.min() - np.log(energies.size / number) - 5.0
+    high = energies.max() + 5.0
+    middle = 0.5 * (low + high)
+    for _ in range(200):
+        middle = 0.5 * (low + high)
+        mean = 0.0
+        for j in range(energies.size):
+            mean += _occupation(energies[j], middle)
+        if abs(mean - number) < 0.25:
+            break
+        if mean < number:
+            low = middle
+        else:
+            high = middle
+    return middle
+
+
+@kernel
+def draw_of_number(rng, energies, number):
+    """Draw a set of `number` orbitals for each snapshot, with weights Π e^{−ε}.
+
+    Parameters
+    ----------
+    rng : Generator
+        Used snapshot after snapshot.
+    energies : array (snapshot, orbital)
+        In units of k_B T, each snapshot its own.
+    number : int
+        Particles; fewer than there are orbitals.
+
+    Returns
+    -------
+    array (snapshot, number) of int64
+        Filled orbitals, ascending.
+    """
+    snapshots, orbitals = energies.shape
+    filled = np.empty((snapshots, number), dtype=np.int64)
+    mean = np.empty(orbitals)
+    for s in range(snapshots):
+        potential = _potential_near(energies[s], number)
+        for j in range(orbitals):
+            mean[j] = _occupation(energies[s, j], potential)
+        count = -1
+        while count != number:
+            count = 0
+            for j in range(orbitals):
+                if rng.random() < mean[j]:
+                    if count < number:
+                        filled[s, count] = j
+                    count += 1
+    return filled
+
+
+@kernel
+def draw_of_potential(rng, energies, potential):
+    """Draw the filled orbitals of each snapshot, each orbital on its own; −1 is padding.
+
+    Parameters
+    ----------
+    rng : Generator
+        Used snapshot after snapshot.
+    energies : array (snapshot, orbital)
+        In units of k_B T, each snapshot its own.
+    potential : float
+        μ/k_B T.
+    """
+    snapshots, orbitals = energies.shape
+    filled = np.full((snapshots, orbitals), -1, dtype=np.int64)
+    most = 0
+    for s in range(snapshots):
+        count = 0
+        for j in range(orbitals):
+            if rng.random() < _occupation(energies[s, j], potential):
+                filled[s, count] = j
+                count += 1
+        most = max(most, count)
+    return filled[:, :most].copy()

@@ -27,19 +27,30 @@ class GrandCanonical:
         Mean number of particles.
     thermal_energy
         k_B T > 0, in the energies' unit.
+    potential
+        μ, where it is given and the mean number follows from it; `population` is then a mean over
+        twists.
     """
 
     orbitals: Orbitals
     population: int
     thermal_energy: float
+    potential: float | None = None
 
     closed = False
     fixed = False
 
     @cached_property
     def chemical_potential(self) -> float:
-        """μ with Σ_k n̄_k = population, in the energies' unit."""
+        """μ, with Σ_k n̄_k = population unless it is given, in the energies' unit."""
+        if self.potential is not None:
+            return self.potential
         return solve_potential(self.orbitals.energies, self.population, self.thermal_energy)
+
+    @property
+    def mean_number(self) -> float:
+        """Mean number of particles, Σ_k n̄_k."""
+        return self.population if self.potential is None else float(self.mean().sum())
 
     def draw(self, rng: np.random.Generator, snapshots: int) -> NDArray[np.int64]:
         """Return the filled orbitals of independent snapshots.

@@ -39,8 +39,15 @@ class GroundState:
     fixed = True
 
     @property
+    def mean_number(self) -> float:
+        """Number of particles."""
+        return self.population
+
+    @property
     def degeneracy(self) -> int:
-        """Number of orbitals in the last level."""
+        """Number of orbitals in the last level; 0 where nothing is filled."""
+        if self.population == 0:
+            return 0
         return int(np.count_nonzero(self.orbitals.level == self.orbitals.level[-1]))
 
     @property
@@ -83,7 +90,7 @@ class GroundState:
     def mean(self) -> NDArray[np.float64]:
         """Return ⟨n_k⟩ of every orbital: 1 in the full levels, v/D in the last one."""
         mean = np.ones(len(self.orbitals.level))
-        mean[self.core :] = self.valence / self.degeneracy
+        mean[self.core :] = self.valence / max(1, self.degeneracy)
         return mean
 
     def pair_terms(self) -> Iterator[PairTerm]:

@@ -4,6 +4,11 @@ The features of a point x are φ_k(x)/√K(x,x), k running over the N filled pla
 feature vector has length 1. Where the filled set is symmetric under k → −k the pairs e^{±ik·x} are
 exchanged for √2 cos k·x and √2 sin k·x, which span the same space: features are then real and all
 products four times cheaper.
+
+Where spins are rotated before detection, all particles of two components are one determinant and a
+point has one coordinate more, u in [0, 1), which says as what it is detected: the first label where
+u is below that label's share of all particles. The features of its component's orbitals are then
+multiplied by the amplitude of that label.
 """
 
 from __future__ import annotations
@@ -31,12 +36,23 @@ class PlaneWaves(NamedTuple):
         N, the number of filled orbitals.
     like : array (0,) of float64 or complex128
         Carries the type of the features.
+    first_terms, first_population : int
+        Terms and orbitals of the first component where spins are rotated; they come first.
+    amplitude : array (label, component) of float64
+        Amplitudes of a rotation of spins; without rows where there is none.
     """
 
     numbers: NDArray[np.int64]
     largest: NDArray[np.int64]
     population: int
     like: NDArray[np.float64] | NDArray[np.complex128]
+    first_terms: int
+    first_population: int
+    amplitude: NDArray[np.float64]
+
+
+# No rotation of spins.
+UNROTATED = np.empty((0, 2))
 
 
 def plane_waves(numbers: NDArray[np.int64]) -> PlaneWaves:
@@ -48,15 +64,60 @@ def plane_waves(numbers: NDArray[np.int64]) -> PlaneWaves:
         Quantum numbers of the filled orbitals.
     """
     population = len(numbers)
-    largest = np.abs(numbers).max(axis=0)
+    largest = np.abs(numbers).max(axis=0, initial=0)
     filled = {tuple(row) for row in numbers.tolist()}
     if any(tuple(-m for m in row) not in filled for row in filled):
         like: NDArray[np.float64] | NDArray[np.complex128] = np.empty(0, dtype=np.complex128)
-        return PlaneWaves(np.ascontiguousarray(numbers), largest, population, like)
+        return _unrotated(np.ascontiguousarray(numbers), largest, population, like)
     zero = (0,) * numbers.shape[1]
     half = [row for row in map(tuple, numbers.tolist()) if row >= zero]
     half.sort(key=lambda row: row != zero)
-    return PlaneWaves(np.array(half, dtype=np.int64), largest, population, np.empty(0))
+    terms = np.array(half, dtype=np.int64).reshape(-1, numbers.shape[1])
+    return _unrotated(terms, largest, population, np.empty(0))
+
+
+def varying_waves(numbers: NDArray[np.int64]) -> PlaneWaves:
+    """Return complex features of orbitals of which each snapshot fills others.
+
+    Parameters
+    ----------
+    numbers : array (orbital, axis) of int64
+        Quantum numbers of all that may be filled.
+    """
+    largest = np.abs(numbers).max(axis=0, initial=0)
+    return _unrotated(numbers, largest, 0, np.empty(0, dtype=np.complex128))
+
+
+def spinor_waves(
+    first: PlaneWaves, second: PlaneWaves, amplitude: NDArray[np.float64]
+) -> PlaneWaves:
+    """Return the features of two components whose spins are rotated.
+
+    Parameters
+    ----------
+    first, second
+        The features of either component; both real or both complex.
+    amplitude : array (label, component)
+        Amplitudes of the rotation.
+    """
+    return PlaneWaves(
+        np.concatenate([first.numbers, second.numbers]),
+        np.maximum(first.largest, second.largest),
+        first.population + second.population,
+        first.like,
+        len(first.numbers),
+        first.population,
+        amplitude,
+    )
+
+
+def _unrotated(
+    numbers: NDArray[np.int64],
+    largest: NDArray[np.int64],
+    population: int,
+    like: NDArray[np.float64] | NDArray[np.complex128],
+) -> PlaneWaves:
+    return PlaneWaves(numbers, largest, population, like, 0, 0, UNROTATED)
 
 
 @kernel
@@ -123,6 +184,51 @@ def _choose_store(waves, tables_real, tables_imaginary, features):
 
 
 @kernel
+def first_share(waves):
+    """Return the share of all particles that are detected as the first label, on average."""
+    first = waves.first_population / waves.population
+    kept = waves.amplitude[0, 0] ** 2
+    turned = waves.amplitude[0, 1] ** 2
+    return kept * first + turned * (1.0 - first)
+
+
+@kernel
+def _turn_spins(waves, labels, features):
+    """Give the features of both components the amplitude of each point's label, and length 1."""
+    share = first_share(waves)
+    parts = np.empty(2)
+    parts[0] = waves.first_population / waves.population
+    parts[1] = 1.0 - parts[0]
+    factor = np.empty((2, labels.size))
+    for p in range(labels.size):
+        label = 0 if labels[p] < share else 1
+        mean = share if label == 0 else 1.0 - share
+        for component in range(2):
+            scale = np.sqrt(parts[component] / mean)
+            factor[component, p] = scale * waves.amplitude[label, component]
+    for row in range(waves.population):
+        here = factor[0] if row < waves.first_population else factor[1]
+        for p in range(labels.size):
+            features[row, p] *= here[p]
+
+
+@kernel
+def _store_spinors(waves, tables_real, tables_imaginary, labels, features):
+    """Write the features of both components, each of length 1, then turn their spins."""
+    terms, first = waves.first_terms, waves.first_population
+    none = waves.amplitude[:0]
+    if first > 0:
+        numbers = waves.numbers[:terms]
+        part = PlaneWaves(numbers, waves.largest, first, waves.like, 0, 0, none)
+        _store(part, tables_real, tables_imaginary, features[:first])
+    if first < waves.population:
+        numbers, population = waves.numbers[terms:], waves.population - first
+        part = PlaneWaves(numbers, waves.largest, population, waves.like, 0, 0, none)
+        _store(part, tables_real, tables_imaginary, features[first:])
+    _turn_spins(waves, labels, features)
+
+
+@kernel
 def fill_features(waves, points, features):
     """Fill the feature vectors of a block of points.
 
@@ -131,11 +237,11 @@ def fill_features(waves, points, features):
     waves : PlaneWaves
         The filled plane waves.
     points : array (axis, point) of float64
-        Fractions of the sides.
+        Fractions of the sides; where spins are rotated, the label's coordinate last.
     features : array (orbital, point) of the type of ``waves.like``
         Filled; each column has length 1.
     """
-    dimension, count = points.shape
+    dimension, count = waves.largest.size, points.shape[1]
     rows = 1
     for a in range(dimension):
         rows = max(rows, 2 * waves.largest[a] + 1)
@@ -143,4 +249,7 @@ def fill_features(waves, points, features):
     tables_imaginary = np.empty((dimension, rows, count))
     for a in range(dimension):
         fill_plane_waves(points[a], waves.largest[a], tables_real[a], tables_imaginary[a])
-    _store(waves, tables_real, tables_imaginary, features)
+    if waves.amplitude.shape[0] > 0:
+        _store_spinors(waves, tables_real, tables_imaginary, points[dimension], features)
+    else:
+        _store(waves, tables_real, tables_imaginary, features)
