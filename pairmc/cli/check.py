@@ -55,7 +55,7 @@ def check(run_file: str) -> None:
         lines.append(f"  all spins rotated by {run.rotation:g} deg; detected on average: {means}")
     lines += ["", _components(run), ""]
     lines += _closed_shells(run) + open_shell_messages(run) + _warm_lines(run)
-    lines += _ranges(run) + _finite_size(run)
+    lines += _ranges(run) + (_state(run) if run.occupation else _finite_size(run))
     lines += _units(run)
     cost = estimate(run)
     lines.append(
@@ -155,6 +155,26 @@ def _ranges(run: RunFile) -> list[str]:
     return lines
 
 
+def _state(run: RunFile) -> list[str]:
+    """Return what the named orbitals amount to: energy, wave vector, degeneracy."""
+    from pairmc.physics.listed_states import state_of
+
+    gas, summary = run.gas, state_of(run.system())
+    if summary is None:
+        return ["orbitals: a component whose shell is open has no state of its own"]
+    kinetic = gas.units.kinetic or 1.0
+    energy = text.energy(kinetic * summary.energy, gas.units)
+    above = text.energy(kinetic * (summary.energy - summary.ground_energy), gas.units)
+    ways = "not counted" if summary.degeneracy is None else f"{summary.degeneracy}"
+    wave = ", ".join(
+        text.with_unit(part, gas.units.length, -1) for part in summary.wave_vector + 0.0
+    )
+    return [
+        f"orbitals as named: energy {energy}, {above} above the ground state; total wave vector "
+        f"({wave}); states of this energy and these populations: {ways}"
+    ]
+
+
 def _finite_size(run: RunFile) -> list[str]:
     """Return by how much this box differs from the infinite system, exactly, in g and in S(q)."""
     from pairmc.physics.grids import separation_grid
@@ -208,10 +228,13 @@ def _example_twists(run: RunFile) -> NDArray[np.float64]:
 
 
 def _closed_shells(run: RunFile) -> list[str]:
-    """Return a line for each component whose shell is closed."""
+    """Return a line for each component that is one determinant."""
+    from pairmc.physics.occupation.listed import Listed
+
     occupations = zip(run.gas.components, run.system().occupations, strict=False)
     return [
-        f"{name}: closed shell, one determinant of {occupation.population}"
+        f"{name}: {'named orbitals' if isinstance(occupation, Listed) else 'closed shell'}, "
+        f"one determinant of {occupation.population}"
         for name, occupation in occupations
         if occupation.closed and occupation.population
     ]
@@ -225,7 +248,7 @@ def open_shell_messages(run: RunFile) -> list[str]:
     system = run.system()
     lines = []
     for name, occupation in zip(run.gas.components, system.components, strict=True):
-        if isinstance(occupation, GroundState) and not occupation.closed:
+        if system.pair is None and isinstance(occupation, GroundState) and not occupation.closed:
             near = " and ".join(map(str, nearest_closed(system.axes, occupation.population)))
             lines.append(
                 f"{name}: open shell, {occupation.valence} of {occupation.degeneracy} orbitals of "

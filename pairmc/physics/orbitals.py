@@ -154,7 +154,7 @@ def enumerate_orbitals(axes: Sequence[Periodic], count: int) -> Orbitals:
             threshold = energies[count - 1] * (1 + 2 * DEGENERACY_TOLERANCE)
             if threshold <= cutoff:
                 kept = energies <= threshold
-                return _by_level(numbers[kept], energies[kept])
+                return by_level(numbers[kept], energies[kept])
         cutoff *= 1.3
 
 
@@ -168,7 +168,7 @@ def enumerate_below(axes: Sequence[Periodic], energy: float) -> Orbitals:
     energy
         In units of ħ²/(m · length²).
     """
-    return _by_level(*_below(axes, energy * (1 + 2 * DEGENERACY_TOLERANCE)))
+    return by_level(*_below(axes, energy * (1 + 2 * DEGENERACY_TOLERANCE)))
 
 
 def _below(
@@ -186,14 +186,28 @@ def _below(
     return numbers[order], energies[order]
 
 
-def _by_level(numbers: NDArray[np.int64], energies: NDArray[np.float64]) -> Orbitals:
-    """Group ascending energies into levels and order each level by its quantum numbers."""
+def by_level(numbers: NDArray[np.int64], energies: NDArray[np.float64]) -> Orbitals:
+    """Group orbitals into levels and order each level by its quantum numbers.
+
+    Parameters
+    ----------
+    numbers : array (orbital, axis) of int64
+        Quantum numbers.
+    energies : array (orbital,)
+        Ascending.
+    """
     step = np.diff(energies) > DEGENERACY_TOLERANCE * energies[1:]
     level = np.concatenate(([0], np.cumsum(step)))
     keys = tuple(numbers[:, a] for a in reversed(range(numbers.shape[1])))
     order = np.lexsort((*keys, level))
     first = np.concatenate(([0], np.flatnonzero(step) + 1))
     return Orbitals(numbers=numbers[order], energies=energies[first][level], level=level)
+
+
+def symmetric(numbers: NDArray[np.int64]) -> bool:
+    """Return whether with each m also −m is among quantum numbers (orbital, axis)."""
+    filled = {tuple(row) for row in numbers.tolist()}
+    return all(tuple(-m for m in row) in filled for row in filled)
 
 
 def nearest_closed(axes: Sequence[Periodic], population: int) -> tuple[int, ...]:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass, replace
 from typing import TYPE_CHECKING, Literal, TypeAlias, Union
 
@@ -12,6 +13,7 @@ from pairmc.physics.axes.periodic import Periodic
 from pairmc.physics.gas import Gas
 from pairmc.physics.occupation.ground import GroundState
 from pairmc.physics.orbitals import (
+    Orbitals,
     TwistedOrbitals,
     enumerate_any_twist,
     enumerate_orbitals,
@@ -24,9 +26,11 @@ if TYPE_CHECKING:
     from pairmc.physics.occupation.averaged import AveragedGround, AveragedWarm
     from pairmc.physics.occupation.canonical import Canonical
     from pairmc.physics.occupation.grand_canonical import GrandCanonical
+    from pairmc.physics.occupation.listed import Listed
+    from pairmc.physics.two_particles import TwoParticleState
 
 # How one component fills its orbitals: at one twist, or at a twist that each snapshot draws.
-Occupation: TypeAlias = Union[GroundState, "Canonical", "GrandCanonical"]
+Occupation: TypeAlias = Union[GroundState, "Listed", "Canonical", "GrandCanonical"]
 Averaged: TypeAlias = Union["AveragedGround", "AveragedWarm"]
 
 # A vector in units of 2π, or one drawn for each snapshot.
@@ -44,13 +48,14 @@ class System:
     axes
         One axis per dimension, with its twist where that is the same in all snapshots.
     occupations
-        One occupation per component. At one twist orbitals are enumerated in one order for all
-        components, so an orbital's index means the same in each. Empty where every snapshot has a
-        twist of its own.
+        One occupation per component. Empty where every snapshot has a twist of its own.
     averaged
         The same where every snapshot has a twist of its own, common to all components; else empty.
     rotation
         Angle in radians by which all spins of two components are turned before they are detected.
+    pair
+        A singlet or triplet of two particles, which is no determinant; `occupations` are then its
+        means only.
     """
 
     gas: Gas
@@ -58,6 +63,7 @@ class System:
     occupations: tuple[Occupation, ...]
     averaged: tuple[Averaged, ...] = ()
     rotation: float = 0.0
+    pair: TwoParticleState | None = None
 
     @property
     def sides(self) -> tuple[float, ...]:
@@ -114,15 +120,92 @@ def build_system(
     rotation
         Angle in radians by which all spins are turned before they are detected; two components.
     """
-    axes = tuple(Periodic(side) for side in gas.box(sides_ratio))
+    axes = build_axes(gas, sides_ratio, twist)
     components = range(len(gas.components))
     if twist == "averaged":
         averaged = tuple(_averaged(gas, axes, part) for part in components)
         return System(gas, axes, (), averaged, rotation)
-    if twist is not None:
-        axes = tuple(replace(axis, twist=part) for axis, part in zip(axes, twist, strict=True))
     occupations = tuple(_occupation(gas, axes, part) for part in components)
     return System(gas, axes, occupations, rotation=rotation)
+
+
+def build_axes(
+    gas: Gas, sides_ratio: tuple[float, ...], twist: Twist | None = None
+) -> tuple[Periodic, ...]:
+    """Return the axes of the box; without a twist where that is no vector.
+
+    Parameters
+    ----------
+    gas, sides_ratio, twist
+        See `build_system`.
+    """
+    axes = tuple(Periodic(side) for side in gas.box(sides_ratio))
+    if twist is None or twist == "averaged":
+        return axes
+    return tuple(replace(axis, twist=float(part)) for axis, part in zip(axes, twist, strict=True))
+
+
+def build_listed(
+    gas: Gas,
+    axes: tuple[Periodic, ...],
+    filled: Sequence[Sequence[Sequence[int]] | None],
+    rotation: float = 0.0,
+) -> System:
+    """Return a gas of which the filled orbitals are named.
+
+    Parameters
+    ----------
+    gas
+        What the gas is, at zero temperature.
+    axes
+        See `build_axes`.
+    filled
+        Of each component the quantum numbers (orbital, axis) of its filled orbitals; None where it
+        is in its ground state.
+    rotation
+        See `build_system`.
+    """
+    from pairmc.physics.occupation.listed import listed_state
+
+    occupations = tuple(
+        _occupation(gas, axes, part) if numbers is None else listed_state(axes, numbers)
+        for part, numbers in enumerate(filled)
+    )
+    return System(gas, axes, occupations, rotation=rotation)
+
+
+def build_pair(
+    gas: Gas,
+    axes: tuple[Periodic, ...],
+    kind: Literal["singlet", "triplet"],
+    numbers: Sequence[Sequence[int]],
+    rotation: float = 0.0,
+) -> System:
+    """Return a singlet or triplet of two particles, one of each component.
+
+    Parameters
+    ----------
+    gas
+        One particle of each of two components, at zero temperature.
+    axes
+        See `build_axes`.
+    kind
+        ``"singlet"`` or ``"triplet"``.
+    numbers : (2, axis)
+        Quantum numbers of the two orbitals.
+    rotation
+        See `build_system`.
+    """
+    from pairmc.physics.two_particles import TwoParticleState
+
+    rows = np.array(numbers, dtype=np.int64).reshape(2, len(axes))
+    distinct = np.unique(rows, axis=0)
+    energies = np.sum([axis.energies(distinct[:, a]) for a, axis in enumerate(axes)], axis=0)
+    # each particle is in either orbital as often: one of a level of both
+    level = Orbitals(distinct, energies, np.zeros(len(distinct), dtype=np.int64))
+    occupations = (GroundState(level, 1), GroundState(level, 1))
+    state = TwoParticleState(kind, rows, rotation)
+    return System(gas, axes, occupations, rotation=rotation, pair=state)
 
 
 def _occupation(gas: Gas, axes: tuple[Periodic, ...], component: int) -> Occupation:

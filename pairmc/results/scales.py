@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from pairmc.physics import thermal
 from pairmc.physics.gas import Gas
+from pairmc.physics.listed_states import state_of
 from pairmc.physics.theory.energy import bulk_per_particle
 from pairmc.runfile.run import RunFile
 from pairmc.units import HARTREE
@@ -102,7 +103,7 @@ def scale_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
     if temperatures is not None:
         about = {"units": "K", "long_name": "Fermi temperature of the component"}
         variables["fermi_temperature"] = (spin, np.array(temperatures), about)
-    variables |= _warm_variables(run, energies)
+    variables |= _warm_variables(run, energies) | _state_variables(run)
     if gas.polarisation is not None:
         variables["polarisation"] = (
             (),
@@ -157,6 +158,46 @@ def _warm_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
     if gas.temperature is not None:
         about = {"units": "K", "long_name": "temperature"}
         variables["temperature"] = ((), gas.temperature, about)
+    return variables
+
+
+def _state_variables(run: RunFile) -> Variables:
+    """Return energy, wave vector and degeneracy where one set of orbitals is filled; else none."""
+    gas, system = run.gas, run.system()
+    summary = state_of(system)
+    if summary is None:
+        return {}
+    scale = 1.0 if gas.units.kinetic is None else gas.units.kinetic
+    about = {"units": energy_unit(gas)}
+    if gas.units.kinetic is None:
+        about = {"units": gas.units.udunits(-2), "comment": "times hbar^2 / mass is the energy"}
+    variables: Variables = {
+        "total_energy": (
+            (),
+            scale * summary.energy,
+            about | {"long_name": "kinetic energy of all particles, exact"},
+        ),
+        "excitation_energy": (
+            (),
+            scale * (summary.energy - summary.ground_energy),
+            about | {"long_name": "total energy above the ground state of the same populations"},
+        ),
+        "total_wave_vector": (
+            ("axis",),
+            summary.wave_vector,
+            {"units": gas.units.udunits(-1), "long_name": "sum of all filled wave vectors"},
+        ),
+    }
+    if summary.degeneracy is not None:
+        # of huge numbers the leading 15 digits
+        variables["degeneracy"] = (
+            (),
+            float(summary.degeneracy),
+            {
+                "units": "1",
+                "long_name": "choices of orbitals of the same populations and total energy",
+            },
+        )
     return variables
 
 

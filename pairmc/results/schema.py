@@ -28,7 +28,13 @@ def ensemble_words(run: RunFile) -> str:
         f"; all spins are rotated by {run.rotation:g} degrees before they are detected, so that "
         "detected populations fluctuate, and pair correlations are normalised by their means"
     )
-    return _ensemble(run) + (turned if run.rotation else "")
+    if run.occupation is None:
+        words = _ensemble(run)
+    elif run.occupation.pair is not None:
+        words = f"one spin {run.occupation.pair.kind} of two particles in two orbitals"
+    else:
+        words = "one determinant of the orbitals named in the run file, fixed populations"
+    return words + (turned if run.rotation else "")
 
 
 def _ensemble(run: RunFile) -> str:

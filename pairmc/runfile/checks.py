@@ -7,6 +7,7 @@ from collections.abc import Iterator
 from math import isqrt
 
 from pairmc.physics.orbitals import nearest_closed
+from pairmc.physics.system import build_axes
 from pairmc.runfile.fields import LARGEST_COMPONENT
 from pairmc.runfile.lines import Path
 from pairmc.runfile.models import (
@@ -17,6 +18,8 @@ from pairmc.runfile.models import (
     GasTable,
     SamplingTable,
 )
+from pairmc.runfile.occupation import OccupationSpec
+from pairmc.runfile.occupation_checks import check_occupation
 from pairmc.runfile.problems import Finding, Refusal
 from pairmc.runfile.run import RunFile
 from pairmc.runfile.scale import check_scale, check_temperature
@@ -46,6 +49,8 @@ def check(document: Document, refused: set[Path]) -> Iterator[Finding]:
     yield from _check_axes(document)
     if not {("gas", "particles"), ("spin", "rotation")} & {path[:2] for path in refused}:
         yield from _check_spin(document)
+    if document.occupation is not None:
+        yield from _check_occupation(document, document.occupation, refused)
     if not {("sampling", "snapshots"), ("sampling", "batches")} & refused:
         yield from _check_batches(document.sampling)
     observables = document.observables
@@ -61,6 +66,14 @@ def check_run(run: RunFile) -> Iterator[Finding]:
     run
         A run whose tables have passed all checks.
     """
+    if run.occupation is not None:
+        yield from check_occupation(
+            run.occupation,
+            run.gas.dimension,
+            run.particles,
+            twist=run.twist,
+            axes=build_axes(run.gas, run.sides, run.twist),
+        )
     if run.gas.thermal_energy > 0:
         yield from _check_warm(run)
     elif run.gas.ensemble == "grand-canonical" and run.twist != "averaged":
@@ -143,6 +156,22 @@ def _check_axes(document: Document) -> Iterator[Finding]:
                     "give one entry per axis, or leave it out",
                 ),
             )
+
+
+def _check_occupation(
+    document: Document, occupation: OccupationSpec, refused: set[Path]
+) -> Iterator[Finding]:
+    """Yield what contradicts the other tables about orbitals that are named."""
+    gas = document.gas
+    places = {path[:2] for path in refused}
+    yield from check_occupation(
+        occupation,
+        None if ("gas", "dimension") in places else gas.dimension,
+        None if ("gas", "particles") in places else gas.particles,
+        warm=gas.temperature.number > 0,
+        ensemble=gas.ensemble,
+        twist=document.confinement.twist,
+    )
 
 
 def _check_spin(document: Document) -> Iterator[Finding]:

@@ -12,7 +12,8 @@ from collections.abc import Mapping
 from dataclasses import asdict
 from typing import Any
 
-from pairmc.physics.system import Twist
+from pairmc.physics.system import Twist, build_axes
+from pairmc.runfile.occupation_checks import canonical_occupation
 from pairmc.runfile.run import RunFile
 
 # Raised whenever the same run draws other snapshots than before.
@@ -37,8 +38,11 @@ def canonical(run: RunFile) -> dict[str, Any]:
         Tables of texts, integers, lists and None, ready for JSON.
     """
     gas, metres = run.gas, run.gas.units.metres
+    axes = build_axes(gas, run.sides, run.twist)
+    filled = canonical_occupation(run.occupation, axes, run.particles)
     density = gas.total_density * (1.0 if metres is None else metres**-gas.dimension)
-    return {
+    named = {} if filled is None else {"occupation": filled}
+    return named | {
         "stream_version": STREAM_VERSION,
         "gas": {
             "dimension": gas.dimension,

@@ -13,6 +13,8 @@ from pydantic import BaseModel, ConfigDict, PlainValidator
 from pairmc.physics.observables.pair_correlation_settings import Settings
 from pairmc.runfile import fields
 from pairmc.runfile.fields import choice, integer, later, length_power, scale
+from pairmc.runfile.occupation import OccupationSpec
+from pairmc.runfile.occupation import occupation as read_occupation
 from pairmc.units import Quantity
 
 LARGEST_SNAPSHOTS = 1_000_000_000
@@ -131,6 +133,7 @@ class Document(_Table):
     gas: GasTable = GasTable()
     spin: SpinTable = SpinTable()
     confinement: ConfinementTable = ConfinementTable()
+    occupation: Annotated[OccupationSpec | None, PlainValidator(read_occupation)] = None
     sampling: SamplingTable = SamplingTable()
     observables: ObservablesTable | None = None
     detection: Annotated[None, _later("a table", _DETECTION)] = None

@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import json
 import re
-from collections.abc import Iterable
+from collections.abc import Iterable, Sequence
 from dataclasses import dataclass
 from difflib import get_close_matches
 
@@ -144,7 +144,16 @@ def did_you_mean(word: str, known: Iterable[str]) -> str:
     return f"did you mean {near}?" if near else ""
 
 
-TABLES = ("gas", "spin", "confinement", "sampling", "observables", "detection", "scan")
+TABLES = (
+    "gas",
+    "spin",
+    "confinement",
+    "occupation",
+    "sampling",
+    "observables",
+    "detection",
+    "scan",
+)
 
 
 def _plain(word: str) -> str:
@@ -156,3 +165,13 @@ def _spell(part: str) -> str:
     if re.fullmatch(r"[A-Za-z0-9_-]{1,60}", part):
         return part
     return value_in_words(part)
+
+
+def numbers_in_words(numbers: Sequence[int]) -> str:
+    """Return quantum numbers as they are written in a run file."""
+    return value_in_words(list(numbers))
+
+
+def counted(number: int, what: str) -> str:
+    """Return a number of things: 1 orbital, 2 orbitals."""
+    return f"{number} {what}" if number == 1 else f"{number} {what}s"

@@ -11,8 +11,17 @@ from math import radians
 from pairmc.errors import InputError, Problem
 from pairmc.physics.gas import Gas
 from pairmc.physics.observables.pair_correlation_settings import Settings as PairCorrelationSettings
-from pairmc.physics.system import System, Twist, build_system
+from pairmc.physics.system import (
+    System,
+    Twist,
+    build_axes,
+    build_listed,
+    build_pair,
+    build_system,
+)
 from pairmc.runfile.models import SEED_LIMIT, Document
+from pairmc.runfile.occupation import OccupationSpec
+from pairmc.runfile.occupation_checks import filled_orbitals
 from pairmc.runfile.problems import value_in_words
 from pairmc.runfile.scale import settle_gas, settle_scale
 from pairmc.units import ATOMIC_MASS, ELECTRON_MASS
@@ -40,6 +49,8 @@ class RunFile:
     rotation
         Angle in degrees, from 0 up to but not 360, by which all spins are turned before they are
         detected.
+    occupation
+        Orbitals that are named, or None: the ground state, or the thermal law.
     sampler
         ``"direct"``.
     snapshots, batches
@@ -61,6 +72,7 @@ class RunFile:
     sides: tuple[float, ...]
     twist: Twist
     rotation: float
+    occupation: OccupationSpec | None
     sampler: str
     snapshots: int
     batches: int
@@ -70,13 +82,18 @@ class RunFile:
     mass_kilogram: float | None
 
     @property
+    def particles(self) -> dict[str, int]:
+        """Population of each component."""
+        return dict(zip(self.gas.components, self.gas.populations, strict=True))
+
+    @property
     def batch_size(self) -> int:
         """Snapshots in one batch."""
         return self.snapshots // self.batches
 
     def system(self) -> System:
         """Return the gas in its box with its filled orbitals; built once for equal gases."""
-        return _system(self.gas, self.sides, self.twist, radians(self.rotation))
+        return _system(self.gas, self.sides, self.twist, radians(self.rotation), self.occupation)
 
     def with_seed(self, seed: int) -> RunFile:
         """Return the same run with another seed.
@@ -148,6 +165,7 @@ def build_run(document: Document, path: str, text: str) -> RunFile:
         sides=document.confinement.sides or (1.0,) * gas.dimension,
         twist=_twist(document.confinement.twist, gas.dimension),
         rotation=document.spin.rotation,
+        occupation=document.occupation,
         sampler=sampling.sampler,
         snapshots=sampling.snapshots,
         batches=sampling.batches,
@@ -174,8 +192,20 @@ def _temperature(gas: Gas) -> str:
 
 
 @lru_cache(maxsize=8)
-def _system(gas: Gas, sides: tuple[float, ...], twist: Twist, rotation: float) -> System:
-    return build_system(gas, sides, twist, rotation)
+def _system(
+    gas: Gas,
+    sides: tuple[float, ...],
+    twist: Twist,
+    rotation: float,
+    occupation: OccupationSpec | None,
+) -> System:
+    if occupation is None:
+        return build_system(gas, sides, twist, rotation)
+    axes = build_axes(gas, sides, twist)
+    particles = dict(zip(gas.components, gas.populations, strict=True))
+    if occupation.pair is not None:
+        return build_pair(gas, axes, occupation.pair.kind, occupation.pair.filled, rotation)
+    return build_listed(gas, axes, filled_orbitals(occupation, axes, particles), rotation)
 
 
 def _title(gas: Gas) -> str:

@@ -5,6 +5,8 @@ from __future__ import annotations
 from dataclasses import dataclass
 from math import log, sqrt
 
+from pairmc.physics.orbitals import symmetric
+from pairmc.physics.system import Averaged, Occupation
 from pairmc.runfile.run import RunFile
 
 # Seconds a snapshot of N particles takes on one core, as a N³ + b N² ln N + c N: matrix products,
@@ -63,16 +65,16 @@ def estimate(run: RunFile) -> Cost:
     tables = 0.0
     if run.rotation:
         # one determinant of all particles in place of one a component
-        a, b, c = _REAL if all(part.closed for part in run.system().components) else _COMPLEX
+        a, b, c = _REAL if all(map(_real, run.system().components)) else _COMPLEX
         seconds += a * particles**3 + b * particles**2 * log(particles + 1) + c * particles
     averaged = run.twist == "averaged"
     for occupation in run.system().components:
         N, orbitals = occupation.population, len(occupation.orbitals)
-        a, b, c = _REAL if occupation.closed else _COMPLEX
+        a, b, c = _REAL if _real(occupation) else _COMPLEX
         if not run.rotation:
             seconds += a * N**3 + b * N * N * log(N + 1) + c * N
         together = particles if run.rotation else N
-        largest = max(largest, (8 if occupation.closed else 16) * 2.5 * together**2)
+        largest = max(largest, (8 if _real(occupation) else 16) * 2.5 * together**2)
         if averaged:
             seconds += _SECONDS_PER_TWISTED_ORBITAL * orbitals
             if not run.gas.thermal_energy:
@@ -95,6 +97,11 @@ def estimate(run: RunFile) -> Cost:
         memory_per_worker=worker,
         file=60_000.0 + tallies + kept * per_snapshot,
     )
+
+
+def _real(occupation: Occupation | Averaged) -> bool:
+    """Return whether features are real: one determinant, alike under k → −k."""
+    return occupation.closed and symmetric(occupation.orbitals.numbers)
 
 
 def _warm_expectations(run: RunFile) -> float:

@@ -343,13 +343,13 @@ TABLES = {
     "[samplings]": (
         "[samplings]",
         "an unknown table",
-        "title, gas, spin, confinement, sampling, observables, detection, scan",
+        "title, gas, spin, confinement, occupation, sampling, observables, detection, scan",
         "did you mean sampling?",
     ),
     "[pair_correlation]": (
         "[pair_correlation]",
         "an unknown table",
-        "title, gas, spin, confinement, sampling, observables, detection, scan",
+        "title, gas, spin, confinement, occupation, sampling, observables, detection, scan",
         "pair_correlation belongs in [observables]",
     ),
     "[[sampling]]": (

@@ -117,6 +117,8 @@ class DirectSampler:
 
     def draw(self, snapshots: int) -> Snapshots:
         """Return the next `snapshots` snapshots, particles ordered by component."""
+        if self._system.pair is not None:
+            return self._system.pair.draw(self._position[0], snapshots)
         occupations, dimension = self._system.components, self._system.gas.dimension
         twist = np.empty((0, 0))
         if self._system.averaged:

@@ -20,6 +20,7 @@ from numpy.typing import NDArray
 
 from pairmc.compiled import kernel, overload
 from pairmc.physics.axes.tables import fill_plane_waves
+from pairmc.physics.orbitals import symmetric
 
 
 class PlaneWaves(NamedTuple):
@@ -65,8 +66,7 @@ def plane_waves(numbers: NDArray[np.int64]) -> PlaneWaves:
     """
     population = len(numbers)
     largest = np.abs(numbers).max(axis=0, initial=0)
-    filled = {tuple(row) for row in numbers.tolist()}
-    if any(tuple(-m for m in row) not in filled for row in filled):
+    if not symmetric(numbers):
         like: NDArray[np.float64] | NDArray[np.complex128] = np.empty(0, dtype=np.complex128)
         return _unrotated(np.ascontiguousarray(numbers), largest, population, like)
     zero = (0,) * numbers.shape[1]

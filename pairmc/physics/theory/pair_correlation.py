@@ -14,6 +14,7 @@ from numpy.typing import NDArray
 from pairmc.physics.grids import SeparationGrid
 from pairmc.physics.occupation.averaged import AveragedGround
 from pairmc.physics.system import System, pair_labels
+from pairmc.physics.theory import two_particles
 from pairmc.physics.theory.pair_densities import (
     PairDensities,
     at_ground_twists,
@@ -34,7 +35,8 @@ def expected(system: System, grid: SeparationGrid) -> dict[str, NDArray[np.float
         g(r) = N⁻² Σ_{k≠k'} ⟨n_k n_k'⟩ [1 − cos((k − k')·r)].
 
     Unlike components are independent and uniform: g = 1. With spins rotated before detection, see
-    `pairmc.physics.theory.pair_densities`; where every snapshot has a twist of its own, see
+    `pairmc.physics.theory.pair_densities`; a singlet or triplet of two particles, see
+    `pairmc.physics.theory.two_particles`; where every snapshot has a twist of its own, see
     `at_twists`.
 
     Parameters
@@ -49,6 +51,9 @@ def expected(system: System, grid: SeparationGrid) -> dict[str, NDArray[np.float
     dict
         The variables of the observable, arrays (pair, separation).
     """
+    if system.pair is not None:
+        pair = two_particles.pair_correlation(system.pair, system.sides, grid.edges)
+        return with_hole(pair, grid)
     return with_hole(_at_one_twist(system, grid.edges), grid)
 
 

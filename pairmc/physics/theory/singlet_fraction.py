@@ -28,6 +28,8 @@ def expected(system: System, grid: SeparationGrid) -> NDArray[np.float64]:
     grid
         The bins.
     """
+    if system.pair is not None:
+        return np.full(grid.bins, float(system.pair.kind == "singlet"))
     within, every = singlet(at_one_twist(system, grid.edges, cross=True))
     return np.asarray(within / every)
 
@@ -71,10 +73,15 @@ def not_invariant(system: System) -> str:
         The gas in its box.
     """
     populations = system.gas.populations
+    if system.pair is not None:
+        return "" if system.pair.kind == "singlet" else "a triplet has a direction"
     if len(populations) != 2:
         return "the gas has not two components"
     if populations[0] != populations[1]:
         return "the populations differ"
+    sets = [{tuple(row) for row in part.orbitals.numbers.tolist()} for part in system.occupations]
+    if all(part.closed for part in system.occupations) and sets and sets[0] != sets[1]:
+        return "the two components fill different orbitals"
     grand = system.gas.ensemble == "grand-canonical"
     closed = all(isinstance(part, AveragedGround) for part in system.averaged) and all(
         part.closed for part in system.occupations
