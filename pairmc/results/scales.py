@@ -11,6 +11,7 @@ from numpy.typing import NDArray
 from pairmc.physics import thermal
 from pairmc.physics.gas import Gas
 from pairmc.physics.listed_states import state_of
+from pairmc.physics.occupation.cutoff import TAIL
 from pairmc.physics.theory.energy import bulk_per_particle
 from pairmc.runfile.run import RunFile
 from pairmc.units import HARTREE
@@ -143,6 +144,16 @@ def _warm_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
     }
     if T == 0:
         return variables
+    variables["orbital_count"] = (
+        spin,
+        np.array([len(part.orbitals) for part in run.system().components]),
+        {
+            "units": "1",
+            "long_name": "orbitals that are ever filled",
+            "comment": f"all others together hold less than {TAIL:g} of a particle",
+            "particles_left_out": TAIL,
+        },
+    )
     potentials = _where_filled(gas, thermal.chemical_potential)
     limits = _where_filled(gas, thermal.long_wavelength_structure_factor)
     variables["chemical_potential_bulk"] = (

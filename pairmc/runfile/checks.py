@@ -30,6 +30,10 @@ COLDEST, HOTTEST = 1e-3, 100.0
 # Particles times orbitals of one component: the table that filled orbitals are drawn from.
 LARGEST_TABLE = 1e8
 
+# Orbitals of one component with a twist: the grid of their differences, some 15 times as many
+# values, cannot be folded.
+LARGEST_TWISTED = 5e5
+
 
 def check(document: Document, refused: set[Path]) -> Iterator[Finding]:
     """Yield what is missing and what contradicts itself, all of it.
@@ -108,6 +112,16 @@ def _check_warm(run: RunFile) -> Iterator[Finding]:
                     f"{ratio:.3g} T_F",
                     f"particles times orbitals up to {LARGEST_TABLE:g}",
                     "fewer particles or a lower temperature",
+                ),
+            )
+        elif any(run.twist) and orbitals > LARGEST_TWISTED:
+            yield Finding(
+                ("confinement", "twist"),
+                Refusal(
+                    f"a twist of a gas that needs about {orbitals:.2g} orbitals at {ratio:.3g} T_F",
+                    f"up to {LARGEST_TWISTED:g} orbitals of a component with a twist, whose "
+                    "expectation needs memory for all their differences",
+                    'twist = "none" (a hot gas hardly feels its boundary), or fewer particles',
                 ),
             )
 

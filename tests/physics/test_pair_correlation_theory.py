@@ -17,7 +17,7 @@ from scipy.special import j1
 from pairmc.physics.grids import SeparationGrid, separation_grid
 from pairmc.physics.observables import pair_correlation
 from pairmc.physics.system import System
-from pairmc.physics.theory.overlaps import by_length, overlaps
+from pairmc.physics.theory.overlaps import overlaps
 from pairmc.physics.theory.pair_correlation import bulk, expected
 from pairmc.statistics import t_quantile
 from tests.oracles import enumeration, pair_density, running_integral
@@ -48,7 +48,7 @@ OPEN = [
 
 def pair_weights(system: System) -> tuple[np.ndarray, np.ndarray]:
     """Return the differences of the first component's orbitals, and how often each occurs."""
-    wavenumbers, sums = by_length(system.axes, overlaps(system.occupations[0])[None])
+    wavenumbers, sums = overlaps(system.occupations[0]).by_length(system.axes)
     return wavenumbers, sums[0]
 
 

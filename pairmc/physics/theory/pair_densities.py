@@ -24,8 +24,8 @@ from pairmc.physics.grids import shell_volumes
 from pairmc.physics.occupation.averaged import AveragedGround
 from pairmc.physics.spin import kept_share
 from pairmc.physics.system import System
+from pairmc.physics.theory.differences import Overlaps
 from pairmc.physics.theory.overlaps import (
-    by_length,
     cross_overlaps,
     cross_overlaps_at_twists,
     overlaps,
@@ -76,13 +76,12 @@ def at_one_twist(system: System, edges: FloatArray, cross: bool) -> PairDensitie
     """
     like, number = [], []
     for occupation in system.occupations:
-        weights = overlaps(occupation)
-        like.append(_differing(system, weights[None], edges)[0])
+        like.append(_differing(system, overlaps(occupation), edges)[0])
         number.append(np.array(occupation.mean_number, dtype=np.float64))
     between = np.zeros(len(edges) - 1)
     if cross:
         weights = cross_overlaps(*system.occupations[:2])
-        between = weights.sum() - _differing(system, weights[None], edges)[0]
+        between = (weights.total[:, None] - _differing(system, weights, edges))[0]
     return PairDensities(like, number, between)
 
 
@@ -110,15 +109,14 @@ def at_ground_twists(
     for state in states:
         pairs, count = np.empty((len(twists), len(edges) - 1)), np.empty(len(twists))
         for part, weights in overlaps_at_twists(state, twists):
-            count[part] = weights.reshape(len(weights), -1)[:, 0]
+            count[part] = weights.at_zero
             pairs[part] = _differing(system, weights, edges)
         like.append(pairs)
         number.append(count)
     between = np.zeros((len(twists), len(edges) - 1))
     if cross:
         for part, weights in cross_overlaps_at_twists(states[0], states[1], twists):
-            total = weights.reshape(len(weights), -1).sum(axis=1)
-            between[part] = total[:, None] - _differing(system, weights, edges)
+            between[part] = weights.total[:, None] - _differing(system, weights, edges)
     return PairDensities(like, number, between)
 
 
@@ -246,10 +244,10 @@ def shell_mean_cosine(
     return np.diff(integral, axis=1) / shell_volumes(dimension, edges)
 
 
-def _differing(system: System, weights: FloatArray, edges: FloatArray) -> FloatArray:
+def _differing(system: System, weights: Overlaps, edges: FloatArray) -> FloatArray:
     """Return Σ_q W(q) [1 − cos q·r], averaged over directions and bins: (…, separation)."""
-    distinct, sums = by_length(system.axes, weights)
-    total = np.zeros((len(weights), len(edges) - 1))
+    distinct, sums = weights.by_length(system.axes)
+    total = np.zeros((len(sums), len(edges) - 1))
     # in pieces, so that many differences and many bins do not fill the memory
     for start in range(0, len(distinct), _CHUNK):
         part = slice(start, start + _CHUNK)

@@ -35,8 +35,9 @@ def expected(system: System, component: int, steps: tuple[int, ...]) -> float:
     steps
         q as whole steps 2π/L along each axis, not all 0.
     """
-    weights = overlaps(system.occupations[component])
-    return _complement(system, component, _at(weights[None], steps)[0])
+    occupation = system.occupations[component]
+    weight = overlaps(occupation).at(steps)[0]
+    return float((occupation.mean_number - weight) / system.gas.populations[component])
 
 
 def at_twists(
@@ -63,8 +64,7 @@ def at_twists(
     population = system.gas.populations[component]
     values = np.empty(len(twists))
     for part, weights in overlaps_at_twists(occupation, twists):
-        number = weights.reshape(len(weights), -1)[:, 0]
-        values[part] = (number - _at(weights, steps)) / population
+        values[part] = (weights.at_zero - weights.at(steps)) / population
     return values
 
 
@@ -88,21 +88,6 @@ def bulk(gas: Gas, component: int, wavenumber: float) -> float:
     else:
         common = _mean_common_volume(d, chemical_potential(d, density, T), T, wavenumber)
     return float(1.0 - common / ((2 * np.pi) ** d * density))
-
-
-def _complement(system: System, component: int, weight: float) -> float:
-    """Return (⟨N⟩ − W(q)) over the mean population of the run."""
-    mean = system.occupations[component].mean_number
-    return float((mean - weight) / system.gas.populations[component])
-
-
-def _at(weights: NDArray[np.float64], steps: tuple[int, ...]) -> NDArray[np.float64]:
-    """Return W (snapshot,) at one difference; 0 beyond the grid."""
-    if any(abs(step) > size // 2 for step, size in zip(steps, weights.shape[1:], strict=True)):
-        return np.zeros(len(weights))
-    row = weights.reshape(len(weights), -1)
-    place = [step % size for step, size in zip(steps, weights.shape[1:], strict=True)]
-    return row[:, int(np.ravel_multi_index(place, weights.shape[1:]))]
 
 
 def _mean_common_volume(
