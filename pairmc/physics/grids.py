@@ -131,7 +131,7 @@ def separation_grid(system: System, bins: int) -> SeparationGrid:
         Number of bins.
     """
     gas = system.gas
-    pairs = pair_labels(gas.components)
+    pairs = pair_labels(system)
     edges = np.linspace(0.0, 0.5 * min(system.sides), bins + 1)
     shells = shell_volumes(gas.dimension, edges)
     densities = system.detected_densities

@@ -14,8 +14,8 @@ import numpy as np
 from numpy.typing import NDArray
 
 
-def kept_share(rotation: float) -> float:
-    """Return cos² θ/2, the probability of being detected as what one was, exact at right angles.
+def shares(rotation: float) -> tuple[float, float]:
+    """Return cos² θ/2 and sin² θ/2, exact at right angles: to be detected as before, as the other.
 
     Parameters
     ----------
@@ -24,8 +24,9 @@ def kept_share(rotation: float) -> float:
     """
     quarters = rotation / (0.5 * pi)
     if quarters == round(quarters):
-        return (1.0, 0.5, 0.0, 0.5)[round(quarters) % 4]
-    return 0.5 * (1.0 + cos(rotation))
+        kept = (1.0, 0.5, 0.0, 0.5)[round(quarters) % 4]
+        return kept, 1.0 - kept
+    return cos(0.5 * rotation) ** 2, sin(0.5 * rotation) ** 2
 
 
 def amplitudes(rotation: float) -> NDArray[np.float64]:
@@ -46,6 +47,6 @@ def detected(rotation: float, prepared: tuple[float, ...]) -> tuple[float, ...]:
     """
     if rotation == 0:
         return prepared
-    kept = kept_share(rotation)
+    kept, turned = shares(rotation)
     first, second = prepared
-    return kept * first + (1 - kept) * second, (1 - kept) * first + kept * second
+    return kept * first + turned * second, turned * first + kept * second

@@ -247,13 +247,12 @@ def _averaged(gas: Gas, axes: tuple[Periodic, ...], component: int) -> Averaged:
     return AveragedWarm(orbitals, population, T, potential if fluctuating else None)
 
 
-def pair_labels(components: tuple[str, ...]) -> tuple[tuple[str, int, int], ...]:
+def pair_labels(system: System) -> tuple[tuple[str, int, int], ...]:
     """Return the unordered pairs of components: label "a-b" and the two indices, first with each.
 
-    For components up, down: up-up, up-down, down-down.
+    For components up, down: up-up, up-down, down-down. A component that no particle is detected as
+    has no pairs.
     """
-    return tuple(
-        (f"{components[i]}-{components[j]}", i, j)
-        for i in range(len(components))
-        for j in range(i, len(components))
-    )
+    names, means = system.gas.components, system.detected_populations
+    seen = [part for part in range(len(names)) if means[part] > 0]
+    return tuple((f"{names[i]}-{names[j]}", i, j) for i in seen for j in seen if j >= i)

@@ -19,7 +19,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from pairmc.physics.snapshots import Snapshots
-from pairmc.physics.spin import kept_share
+from pairmc.physics.spin import shares
 
 
 @dataclass(frozen=True, eq=False)
@@ -95,7 +95,7 @@ class TwoParticleState:
         labels = np.zeros((len(uniform), 2), dtype=np.int8)
         labels[:, 1] = 1
         if self.kind == "triplet":
-            unlike = kept_share(2.0 * self.rotation)
+            unlike = shares(2.0 * self.rotation)[0]
             labels[uniform >= unlike, 1] = 0
             labels[uniform >= 0.5 * (1.0 + unlike)] = 1
         return labels

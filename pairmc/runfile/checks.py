@@ -201,26 +201,13 @@ def _check_spin(document: Document) -> Iterator[Finding]:
                 "name a second component, such as particles = { up = 49, down = 0 }",
             ),
         )
-    elif empty and (rotation == 0 or len(empty) == len(particles)):
-        everyone = len(empty) == len(particles)
+    elif empty and (len(particles) != 2 or len(empty) == 2):
         yield Finding(
             ("gas", "particles", empty[0]),
             Refusal(
                 "0",
-                f"a whole number from 1 to {LARGEST_COMPONENT}, or 0 in one of two components "
-                "whose spins are rotated",
-                "give it particles"
-                if everyone
-                else "leave the component out, or set [spin] rotation",
-            ),
-        )
-    elif empty and rotation == 180:
-        yield Finding(
-            ("spin", "rotation"),
-            Refusal(
-                "180 degrees of a gas of one component",
-                "an angle at which both components are detected",
-                "leave the rotation out and name the other component",
+                f"a whole number from 1 to {LARGEST_COMPONENT}, or 0 in one of two components",
+                "give it particles, or leave it out",
             ),
         )
 

@@ -20,7 +20,7 @@ from pairmc.physics.gas import (
     density_of_wigner_seitz_radius,
     fermi_wavenumber,
 )
-from pairmc.physics.system import build_system, pair_labels
+from pairmc.physics.system import System, build_system, pair_labels
 from pairmc.units import Units
 from tests.oracles import shells
 
@@ -194,12 +194,15 @@ def test_no_energy_without_a_mass_and_no_kelvin_without_joules():
 
 
 def test_pair_labels():
-    assert pair_labels(("up", "down")) == (
+    def gas_of(names: tuple[str, ...]) -> System:
+        return build_system(Gas(1, names, (1,) * len(names), 1.0), (1.0,))
+
+    assert pair_labels(gas_of(("up", "down"))) == (
         ("up-up", 0, 0),
         ("up-down", 0, 1),
         ("down-down", 1, 1),
     )
-    assert [label for label, *_ in pair_labels(("a", "b", "c"))] == [
+    assert [label for label, *_ in pair_labels(gas_of(("a", "b", "c")))] == [
         "a-a",
         "a-b",
         "a-c",

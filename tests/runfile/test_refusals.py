@@ -398,8 +398,8 @@ def test_observables_of_later_releases_are_known(name: str, gas: str, problems: 
             (
                 ".up",
                 "0",
-                f"{COUNT}, or 0 in one of two components whose spins are rotated",
-                "give it particles",
+                f"{COUNT}, or 0 in one of two components",
+                "give it particles, or leave it out",
             ),
         ),
         ("{ up = -1 }", (".up", "-1", COUNT)),

@@ -71,8 +71,8 @@ class Overlaps(NamedTuple):
         """
         flat = self.weights.reshape(len(self.weights), -1)
         largest = flat.max(axis=0, initial=0.0)
+        largest[0] = 0.0  # q = 0 is no difference
         occurring = largest > 1e-9 * largest.max()
-        occurring[0] = False  # q = 0
         wavenumbers = self._lengths(axes)
         order = np.flatnonzero(occurring)
         order = order[np.argsort(wavenumbers[order], kind="stable")]

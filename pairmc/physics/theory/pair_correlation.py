@@ -163,6 +163,6 @@ def _correlation(system: System, parts: PairDensities) -> NDArray[np.float64]:
     return np.stack(
         [
             detected(system, parts, i, j) / (means[i] * means[j])
-            for _, i, j in pair_labels(system.gas.components)
+            for _, i, j in pair_labels(system)
         ]
     )

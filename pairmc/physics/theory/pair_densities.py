@@ -22,7 +22,7 @@ from scipy import special
 from pairmc.physics.gas import Gas
 from pairmc.physics.grids import shell_volumes
 from pairmc.physics.occupation.averaged import AveragedGround
-from pairmc.physics.spin import kept_share
+from pairmc.physics.spin import shares
 from pairmc.physics.system import System
 from pairmc.physics.theory.differences import Overlaps
 from pairmc.physics.theory.overlaps import (
@@ -179,8 +179,7 @@ def detected(system: System, parts: PairDensities, first: int, second: int) -> F
     both = (parts.number[first] * parts.number[second])[..., None]
     if system.rotation == 0:
         return parts.like[first] if first == second else both + 0.0 * parts.like[first]
-    kept = kept_share(system.rotation)
-    turned = 1.0 - kept
+    kept, turned = shares(system.rotation)
     both = (parts.number[0] * parts.number[1])[..., None]
     one, other = parts.like
     if first != second:
