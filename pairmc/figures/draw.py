@@ -4,16 +4,16 @@ from __future__ import annotations
 
 import os
 from collections.abc import Sequence
-from importlib import import_module
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
 import xarray as xr
 
 from pairmc.errors import InputError, Problem
+from pairmc.figures.panels import panels_of
 from pairmc.figures.style import inches, style
+from pairmc.figures.views import MOST_ANGLES, VIEWS, differ_only_in_rotation
 from pairmc.files import known_suffix, refuse_unless_writable, write_whole
-from pairmc.physics.observables import registry
 from pairmc.results.load import load
 
 if TYPE_CHECKING:
@@ -41,7 +41,11 @@ _MOST_BEFORE_SVG = 1000  # bytes between the beginning of an SVG file and its fi
 Result = xr.Dataset | str | os.PathLike[str]
 
 
-def plot(results: Result | Sequence[Result], into: str | os.PathLike[str] | None = None) -> Figure:
+def plot(
+    results: Result | Sequence[Result],
+    into: str | os.PathLike[str] | None = None,
+    show: str = VIEWS[0],
+) -> Figure:
     """Draw one result or several, and save the picture where a file is named.
 
     Parameters
@@ -51,6 +55,8 @@ def plot(results: Result | Sequence[Result], into: str | os.PathLike[str] | None
     into
         Picture to write: .png, .pdf or .svg; None writes nothing. An older picture of the same
         format is replaced, no other file.
+    show
+        "exchange-hole", "pair-correlation" or "singlet-fraction".
 
     Returns
     -------
@@ -65,7 +71,7 @@ def plot(results: Result | Sequence[Result], into: str | os.PathLike[str] | None
     paths = [each for each in given if not isinstance(each, xr.Dataset)]
     if into is not None:
         picture_format(into, paths)
-    figure = draw([_dataset(each) for each in given])
+    figure = draw([_dataset(each) for each in given], show=show)
     if into is not None:
         save(figure, into)
     return figure
@@ -91,18 +97,23 @@ def _dataset(result: Result) -> xr.Dataset:
     return result if isinstance(result, xr.Dataset) else load(result, snapshots=False)
 
 
-def draw(datasets: Sequence[xr.Dataset], names: Sequence[str] | None = None) -> Figure:
+def draw(
+    datasets: Sequence[xr.Dataset], names: Sequence[str] | None = None, show: str = VIEWS[0]
+) -> Figure:
     """Draw results below one another, each in panels of its own.
 
     Each observable is drawn by figures/NAME.py, which says how large its panel is,
-    ``size(dataset)``, and fills it, ``draw(dataset, panel, heading)``.
+    ``size(dataset)``, and fills it, ``draw(dataset, panel, heading)``. Pair correlations of results
+    that differ only in the rotation of spins share a panel.
 
     Parameters
     ----------
     datasets
-        Results, at most `MOST_RESULTS`.
+        Results, at most `MOST_RESULTS`; at most `MOST_ANGLES` that share a panel.
     names
-        What to call each; None takes their titles.
+        What to call each; None takes their titles, as a panel of several does.
+    show
+        One of `VIEWS`.
 
     Returns
     -------
@@ -112,15 +123,19 @@ def draw(datasets: Sequence[xr.Dataset], names: Sequence[str] | None = None) -> 
     Raises
     ------
     InputError
-        Where there are no results, too many, or one with nothing to draw; or no matplotlib.
+        Where there are no results, too many, or one without what is to be shown; or no matplotlib.
     """
+    if show not in VIEWS:
+        raise InputError(Problem("show", repr(show), ", ".join(repr(view) for view in VIEWS)))
     headings = [dataset.attrs.get("title", "") for dataset in datasets] if names is None else names
-    if not 1 <= len(datasets) <= MOST_RESULTS:
+    together = show == "pair-correlation" and differ_only_in_rotation(datasets)
+    most = MOST_ANGLES if together else MOST_RESULTS
+    if not 1 <= len(datasets) <= most:
         raise InputError(
             Problem(
                 "results to draw",
                 str(len(datasets)),
-                f"1 to {MOST_RESULTS} in one picture",
+                f"1 to {most} in one picture",
                 "draw them in several pictures",
             )
         )
@@ -131,19 +146,14 @@ def draw(datasets: Sequence[xr.Dataset], names: Sequence[str] | None = None) -> 
         from matplotlib.backends.backend_agg import FigureCanvasAgg
         from matplotlib.figure import Figure
 
-        panels = [
-            (import_module(f"pairmc.figures.{name}"), dataset, heading)
-            for dataset, heading in zip(datasets, headings, strict=True)
-            for name in _observables(dataset, heading)
-        ]
-        sizes = [module.size(dataset) for module, dataset, _ in panels]
-        heights = [height for _, height in sizes]
-        width = max(width for width, _ in sizes)
+        panels = panels_of(datasets, headings, show)
+        heights = [panel.height for panel in panels]
+        width = max(panel.width for panel in panels)
         figure = Figure(figsize=inches(width, sum(heights)), layout="constrained")
         FigureCanvasAgg(figure)
         parts = figure.subfigures(len(panels), 1, squeeze=False, height_ratios=heights)
-        for (module, dataset, heading), panel in zip(panels, parts[:, 0], strict=True):
-            module.draw(dataset, panel, heading)
+        for panel, part in zip(panels, parts[:, 0], strict=True):
+            panel.fill(part)
         figure.draw_without_rendering()
         figure.set_layout_engine("none")
     return figure
@@ -216,18 +226,3 @@ def _is_picture(path: Path, kind: str) -> bool:
         start = file.read(_MOST_BEFORE_SVG)
     known = start.startswith(BEGINNINGS[kind]) and (kind != "svg" or b"<svg" in start)
     return known or not start
-
-
-def _observables(dataset: xr.Dataset, heading: str) -> list[str]:
-    """Return the observables that a result holds, or refuse one that holds none."""
-    names = [name for name in registry.NAMES if name in dataset]
-    if not names:
-        raise InputError(
-            Problem(
-                heading or "a result",
-                "a dataset without observables",
-                ", ".join(registry.NAMES),
-                "load a result of pairmc sample",
-            )
-        )
-    return names

@@ -6,7 +6,7 @@ bins and drawn as steps, so that a point is to be held against the step it stand
 
 from __future__ import annotations
 
-from math import floor, log10
+from collections.abc import Sequence
 from typing import Any
 
 import numpy as np
@@ -15,16 +15,13 @@ from matplotlib.axes import Axes
 from matplotlib.container import ErrorbarContainer
 from matplotlib.figure import SubFigure
 from matplotlib.legend_handler import HandlerTuple
-from matplotlib.patches import Patch
-from matplotlib.ticker import StrMethodFormatter
 from numpy.typing import NDArray
 
 from pairmc.errors import InputError, Problem
 from pairmc.figures import style
-from pairmc.figures.pair_scales import label_separation, label_values, scales_of
-from pairmc.results.audit import INTERVAL_LEVEL
+from pairmc.figures.differences import INFINITE, band_patch, draw_differences, edges_of, reach_of
+from pairmc.figures.pair_scales import label_hole, label_separation, label_values, scales_of
 from pairmc.results.summary import probability, verdict
-from pairmc.statistics import t_quantile
 
 # Pairs in one picture.
 MOST_PAIRS = 21
@@ -45,12 +42,6 @@ _MARGIN = 0.08
 # Points above so many times the highest curve do not set the scale.
 _HIGHEST = 2.0
 
-# The lower panel shows at least so many standard errors.
-_LEAST_DIFFERENCE = 3.6
-
-# The curve of the infinite system.
-_INFINITE: dict[str, Any] = {"color": style.LIGHT, "linestyle": (0, (2.2, 0.7))}
-
 
 def size(dataset: xr.Dataset) -> tuple[float, float]:
     """Return width and height of the panel in millimetres."""
@@ -59,7 +50,7 @@ def size(dataset: xr.Dataset) -> tuple[float, float]:
     return width, _FRAME_HEIGHT + _ROW_HEIGHT * rows
 
 
-def draw(dataset: xr.Dataset, panel: SubFigure, heading: str) -> None:
+def draw(dataset: xr.Dataset, panel: SubFigure, heading: str, hole: bool = True) -> None:
     """Fill a panel: for each pair, g above and standardised differences below.
 
     Parameters
@@ -70,6 +61,8 @@ def draw(dataset: xr.Dataset, panel: SubFigure, heading: str) -> None:
         Empty, of the size that `size` returns.
     heading
         What the result is called.
+    hole
+        With a scale of the exchange hole at the right.
     """
     rows, columns = _shape(dataset)
     width = style.width_of(panel) - 6.0
@@ -78,8 +71,8 @@ def draw(dataset: xr.Dataset, panel: SubFigure, heading: str) -> None:
         2 * rows, columns, squeeze=False, height_ratios=[_RATIO, 1.0] * rows, sharex=True
     )
     scales = scales_of(dataset)
-    limits = _limits(dataset)
-    reach = _reach(dataset)
+    limits = limits_of([dataset])
+    reach = reach_of([dataset])
     for index in range(rows * columns):
         row, column = divmod(index, columns)
         upper, lower = axes[2 * row, column], axes[2 * row + 1, column]
@@ -89,9 +82,12 @@ def draw(dataset: xr.Dataset, panel: SubFigure, heading: str) -> None:
             continue
         first, last = column == 0, index in (dataset.sizes["pair"] - 1, (row + 1) * columns - 1)
         _draw_values(dataset, index, upper, limits)
-        _draw_differences(dataset, index, lower, reach)
+        marker = _marker(dataset, index) | {"markersize": _MARKER_SIZE}
+        draw_differences(dataset, index, lower, reach, marker)
         label_separation(upper, lower, scales)
-        label_values(dataset, index, upper, scales, first, last)
+        label_values(dataset, index, upper, first)
+        if hole:
+            label_hole(dataset, index, upper, scales, last)
         if first:
             lower.set_ylabel("difference /\nstandard error")
         else:
@@ -145,26 +141,23 @@ def _shape(dataset: xr.Dataset) -> tuple[int, int]:
     return -(-pairs // columns), columns
 
 
-def _limits(dataset: xr.Dataset) -> tuple[float, float]:
+def limits_of(datasets: Sequence[xr.Dataset]) -> tuple[float, float]:
     """Return the range of g: all curves, the lower ends of all intervals, and the points.
 
     Where next to nothing was expected, one chance pair is a point far above all others and the
     interval of no pair ends beyond any scale: such bars leave the panel, and points above
     `_HIGHEST` times the highest curve are marked at its edge.
     """
-    curves = max(float(dataset[f"pair_correlation_{part}"].max()) for part in ("expected", "bulk"))
-    points = dataset["pair_correlation"].values
-    low = min(0.0, float(dataset["pair_correlation_interval"].min()))
+    curves = max(
+        float(dataset[f"pair_correlation_{part}"].max())
+        for dataset in datasets
+        for part in ("expected", "bulk")
+    )
+    points = np.concatenate([dataset["pair_correlation"].values.ravel() for dataset in datasets])
+    low = min(0.0, *(float(dataset["pair_correlation_interval"].min()) for dataset in datasets))
     high = max(curves, float(points[points <= _HIGHEST * curves].max(initial=0.0)))
     room = _MARGIN * (high - low)
     return low - room, high + 1.5 * room
-
-
-def _reach(dataset: xr.Dataset) -> float:
-    """Return how many standard errors the lower panels show to either side."""
-    differences = np.abs(dataset["pair_correlation_difference"].values)
-    finite = differences[np.isfinite(differences)]
-    return max(_LEAST_DIFFERENCE, 1.15 * float(finite.max(initial=0.0)))
 
 
 def _is_like(label: str) -> bool:
@@ -184,12 +177,6 @@ def _marker(dataset: xr.Dataset, index: int) -> dict[str, Any]:
         "markersize": size,
         "markerfacecolor": "white",
     }
-
-
-def _edges(dataset: xr.Dataset) -> NDArray[np.float64]:
-    """Return the edges of the bins (separation + 1,)."""
-    bounds = dataset["separation_bounds"].values
-    return np.append(bounds[:, 0], bounds[-1, 1])
 
 
 def _draw_values(
@@ -212,23 +199,23 @@ def _draw_values(
         )
     axes.stairs(
         part["pair_correlation_bulk"].values,
-        _edges(dataset),
+        edges_of(dataset),
         baseline=None,
         label="infinite",
         linewidth=2.6,
         zorder=1,
-        **_INFINITE,
+        **INFINITE,
     )
     axes.stairs(
         part["pair_correlation_expected"].values,
-        _edges(dataset),
+        edges_of(dataset),
         baseline=None,
         color=style.DARK,
         linewidth=0.6,
         label="exact",
         zorder=4,
     )
-    axes.set_xlim(0.0, float(_edges(dataset)[-1]))
+    axes.set_xlim(0.0, float(edges_of(dataset)[-1]))
     axes.set_ylim(*limits)
     return axes.errorbar(
         separation,
@@ -241,80 +228,6 @@ def _draw_values(
         zorder=3,
         **_marker(dataset, index),
     )
-
-
-def _draw_differences(dataset: xr.Dataset, index: int, axes: Axes, reach: float) -> None:
-    """Draw the standardised differences of the merged bins of one pair, each over its width."""
-    band = t_quantile(INTERVAL_LEVEL, dataset.sizes["batch"])
-    axes.axhspan(-band, band, color=style.BAND, linewidth=0.0, zorder=0)
-    axes.axhline(0.0, color=style.DARK, linewidth=0.5, zorder=1)
-    axes.set_ylim(-reach, reach)
-    axes.set_yticks(_whole_ticks(reach))
-    axes.yaxis.set_major_formatter(StrMethodFormatter("{x:.0f}"))
-    start, stop, difference, infinite = merged_differences(dataset, index)
-    if len(difference) == 0:
-        axes.text(0.5, 0.72, "too few pairs", transform=axes.transAxes, ha="center", va="center")
-        return
-    axes.stairs(
-        infinite, np.append(start, stop[-1]), baseline=None, linewidth=1.3, zorder=2, **_INFINITE
-    )
-    marker = _marker(dataset, index) | {"markersize": _MARKER_SIZE}
-    finite = np.isfinite(difference)
-    axes.errorbar(
-        (0.5 * (start + stop))[finite],
-        difference[finite],
-        xerr=(0.5 * (stop - start))[finite],
-        linestyle="none",
-        elinewidth=0.6,
-        markeredgewidth=0.5,
-        zorder=3,
-        **marker,
-    )
-    beyond = np.isinf(difference)
-    axes.plot(
-        (0.5 * (start + stop))[beyond],
-        np.sign(difference[beyond]) * 0.93 * reach,
-        linestyle="none",
-        **(marker | {"marker": "x"}),
-    )
-
-
-def _whole_ticks(reach: float) -> NDArray[np.float64]:
-    """Return a few whole numbers either side of zero, none so near the edge that labels touch."""
-    power = 10.0 ** max(0, floor(log10(reach / 2.5)))
-    step = next(step for step in (1, 2, 5, 10) if reach / (step * power) <= 2.5) * power
-    most = int(0.85 * reach / step)
-    return np.arange(-most, most + 1, dtype=np.float64) * step
-
-
-def merged_differences(
-    dataset: xr.Dataset, index: int
-) -> tuple[NDArray[np.float64], NDArray[np.float64], NDArray[np.float64], NDArray[np.float64]]:
-    """Return what is known of the merged bins of one pair.
-
-    Returns
-    -------
-    start, stop : array (merged,)
-        Edges, in length units.
-    difference : array (merged,)
-        Sampled less exact, in standard errors.
-    infinite : array (merged,)
-        Infinite system less exact, in the same standard errors; each g of a bin counts with the
-        volume of its shell.
-    """
-    part, edges = dataset.isel(pair=index), _edges(dataset)
-    merge = part["pair_correlation_merge"].values
-    numbers, first, sizes = np.unique(merge, return_index=True, return_counts=True)
-    tested = numbers >= 0
-    numbers, first, after = numbers[tested], first[tested], (first + sizes)[tested]
-    shell = np.diff(edges ** dataset.sizes["axis"])
-    bulk = shell * part["pair_correlation_bulk"].values
-    average = [bulk[a:b].sum() / shell[a:b].sum() for a, b in zip(first, after, strict=True)]
-    merged = dataset.isel(pair_correlation_merged_bin=numbers)
-    exact = merged["pair_correlation_merged_expected"].values
-    error = merged["pair_correlation_merged_error"].values
-    infinite = (np.array(average) - exact) / np.where(error > 0.0, error, np.nan)
-    return edges[first], edges[after], part["pair_correlation_difference"].values[first], infinite
 
 
 def _legend_entries(dataset: xr.Dataset, axes: NDArray[Any]) -> tuple[list[Any], list[str]]:
@@ -332,8 +245,7 @@ def _legend_entries(dataset: xr.Dataset, axes: NDArray[Any]) -> tuple[list[Any],
         f"sampled, {interval}": tuple(kind["sampled"] for kind in drawn.values()),
         "exact, this finite system": one["exact"],
         "infinite system": one["infinite"],
-        f"{100 * INTERVAL_LEVEL:g} % band of differences": Patch(color=style.BAND, linewidth=0.0),
-    }
+    } | dict([band_patch()])
     if above:
         entries["above the panel"] = tuple(above)
     return list(entries.values()), list(entries)

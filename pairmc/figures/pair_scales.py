@@ -50,7 +50,7 @@ def scales_of(dataset: xr.Dataset) -> Scales:
         unit=separation.attrs.get("length_unit", ""),
         dimension=dataset.sizes["axis"],
         length_exponent=style.exponent_for(float(separation.max())),
-        density_exponent=style.exponent_for(float(dataset["density"].max())),
+        density_exponent=style.exponent_for(max(_densities(dataset))),
         wavenumber=float(dataset["fermi_wavenumber"][majority]),
         majority=str(dataset["spin"].values[majority]) if dataset.sizes["spin"] > 1 else "",
     )
@@ -74,24 +74,32 @@ def label_separation(upper: Axes, lower: Axes, scales: Scales) -> None:
     top.set_xlabel(rf"$k_\mathrm{{F}} r$  ($k_\mathrm{{F}}${of})" if of else r"$k_\mathrm{F} r$")
 
 
-def label_values(
-    dataset: xr.Dataset, index: int, axes: Axes, scales: Scales, first: bool, last: bool
-) -> None:
-    """Name both scales of the values: g at the left, the exchange hole n_s'(g − 1) at the right."""
-    label = str(dataset["pair"].values[index])
-    second = list(dataset["spin"].values).index(label.split("-")[1])
-    density = float(dataset["density"][second])
-    axes.set_title(_title(label))
+def label_values(dataset: xr.Dataset, index: int, axes: Axes, first: bool) -> None:
+    """Name a pair and the scale of its g, at the left."""
+    axes.set_title(_title(str(dataset["pair"].values[index])))
     style.number_ticks(axes.yaxis, 6)
     if first:
         axes.set_ylabel("pair correlation $g$")
     else:
         axes.tick_params(labelleft=False)
-    right = axes.secondary_yaxis("right", functions=_linear(density, 1.0))
+
+
+def label_hole(dataset: xr.Dataset, index: int, axes: Axes, scales: Scales, last: bool) -> None:
+    """Name the scale of the exchange hole n_s'(g − 1) at the right."""
+    second = list(dataset["spin"].values).index(str(dataset["pair"].values[index]).split("-")[1])
+    right = axes.secondary_yaxis("right", functions=_linear(_densities(dataset)[second], 1.0))
     style.number_ticks(right.yaxis, 6, scales.density_exponent)
     if last:
         unit = style.unit_in_words(scales.unit, -scales.dimension, scales.density_exponent)
         right.set_ylabel(f"exchange hole ({unit})")
+
+
+def _densities(dataset: xr.Dataset) -> list[float]:
+    """Return the density of each component, as it is detected."""
+    if "detected_population" in dataset:
+        volume = float(np.prod(dataset["side"].values))
+        return [float(number) / volume for number in dataset["detected_population"]]
+    return [float(density) for density in dataset["density"]]
 
 
 def _linear(

@@ -18,8 +18,9 @@ from matplotlib.text import Text
 from matplotlib.transforms import Bbox
 
 from pairmc.errors import InputError
+from pairmc.figures.differences import merged_differences, whole_ticks
 from pairmc.figures.draw import draw
-from pairmc.figures.pair_correlation import MOST_PAIRS, _whole_ticks, in_words, merged_differences
+from pairmc.figures.pair_correlation import MOST_PAIRS, in_words
 from pairmc.statistics import t_quantile
 
 UNITS = {
@@ -205,7 +206,7 @@ def test_tick_numbers_are_the_values_less_the_power_of_ten(results: dict[str, xr
 
 @pytest.mark.parametrize("reach", [3.6, 4.3, 9.9, 24.0, 26.0, 1e3, 3.7e6])
 def test_standard_errors_are_counted_in_whole_numbers(reach: float) -> None:
-    ticks = _whole_ticks(reach)
+    ticks = whole_ticks(reach)
     np.testing.assert_array_equal(ticks, np.round(ticks))
     np.testing.assert_array_equal(ticks, -ticks[::-1])
     assert 3 <= len(ticks) <= 5
@@ -284,7 +285,8 @@ def beyond(axes: _AxesBase) -> list[Text]:
     return hidden
 
 
-def test_no_text_is_cut_small_or_on_top_of_another(figure: Figure) -> None:
+def check_texts(figure: Figure) -> None:
+    """Hold all texts of a figure against its edges, the smallest size and one another."""
     axes = [one for one in figure.findobj(Axes) if isinstance(one, Axes)]
     secondary = [child for one in axes for child in one.child_axes]
     hidden = {id(text) for one in (*axes, *secondary) for text in beyond(one)}
@@ -302,6 +304,10 @@ def test_no_text_is_cut_small_or_on_top_of_another(figure: Figure) -> None:
     assert len(boxes) > 20
     for (one, first), (other, second) in combinations(boxes, 2):
         assert not first.overlaps(second), (one, other)
+
+
+def test_no_text_is_cut_small_or_on_top_of_another(figure: Figure) -> None:
+    check_texts(figure)
 
 
 def test_pairs_can_be_chosen_and_too_many_are_refused(results: dict[str, xr.Dataset]) -> None:

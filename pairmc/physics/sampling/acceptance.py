@@ -28,12 +28,14 @@ def accept_in_order(gram, thresholds, most, factor, chosen):
     """Decide candidates one after the other: each must exceed its threshold given those before.
 
     The residual of candidate j, given the accepted ones before it, is the next pivot of the
-    Cholesky factorisation of `gram` restricted to accepted rows.
+    Cholesky factorisation of `gram` restricted to accepted rows, which takes each accepted
+    candidate out of all that follow: loops that run through the vector unit.
 
     Parameters
     ----------
     gram : array (candidate, candidate)
-        Inner products ⟨r_j, r_l⟩ = Σ r_j conj(r_l) of the candidates' residual vectors.
+        Inner products ⟨r_j, r_l⟩ = Σ r_j conj(r_l) of the candidates' residual vectors;
+        overwritten.
     thresholds : array (candidate,)
         Candidate j is accepted when its pivot exceeds max(threshold_j, `RESIDUAL_FLOOR`).
     most : int
@@ -48,22 +50,29 @@ def accept_in_order(gram, thresholds, most, factor, chosen):
     int
         How many were accepted.
     """
+    candidates = gram.shape[0]
     accepted = 0
-    for j in range(gram.shape[0]):
+    for j in range(candidates):
         if accepted == most:
             break
-        row = factor[accepted]
         pivot = gram[j, j].real
+        if not (pivot > thresholds[j] and pivot > RESIDUAL_FLOOR):
+            continue
+        row = factor[accepted]
         for l in range(accepted):
-            other = factor[l]
-            total = gram[j, chosen[l]]
-            for m in range(l):
-                total -= row[m] * np.conj(other[m])
-            entry = total / other[l]
-            row[l] = entry
-            pivot -= (entry * np.conj(entry)).real
-        if pivot > thresholds[j] and pivot > RESIDUAL_FLOOR:
-            row[accepted] = np.sqrt(pivot)
-            chosen[accepted] = j
-            accepted += 1
+            row[l] = gram[chosen[l], j]
+        length = np.sqrt(pivot)
+        row[accepted] = length
+        chosen[accepted] = j
+        accepted += 1
+        # what the candidates after it have along it, kept in the row of the gram matrix that is
+        # done with, is taken out of all their inner products
+        along = gram[j]
+        for i in range(j + 1, candidates):
+            along[i] = gram[i, j] / length
+        for i in range(j + 1, candidates):
+            weight = along[i]
+            target = gram[i]
+            for l in range(j + 1, i + 1):
+                target[l] -= weight * np.conj(along[l])
     return accepted

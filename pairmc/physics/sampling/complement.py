@@ -140,6 +140,57 @@ def complement_of(basis):
 
 
 @kernel
+def make_reflector(columns, reflectors, j):
+    """Write v_j, of ‖v‖² = 2, whose reflection 1 − v v† takes column j to its first j + 1 rows."""
+    left = columns.shape[0]
+    length = 0.0
+    for l in range(j, left):
+        length += (columns[l, j] * np.conj(columns[l, j])).real
+    length = np.sqrt(length)
+    head = columns[j, j]
+    size = np.abs(head)
+    phase = head / size if size > 0.0 else head + 1.0
+    scale = 1.0 / np.sqrt(length * (length + size))
+    reflectors[j, j] = (head + phase * length) * scale  # the sign avoids cancellation
+    for l in range(j + 1, left):
+        reflectors[l, j] = columns[l, j] * scale
+
+
+@kernel
+def apply_reflector(columns, reflectors, j, work):
+    """Reflect the columns after j: c − v (v† c). Loops run along rows, through the vector unit."""
+    left, accepted = columns.shape
+    work[:] = 0.0
+    for l in range(j, left):
+        factor = np.conj(reflectors[l, j])
+        row = columns[l]
+        for i in range(j + 1, accepted):
+            work[i] += factor * row[i]
+    for l in range(j, left):
+        factor = reflectors[l, j]
+        row = columns[l]
+        for i in range(j + 1, accepted):
+            row[i] -= factor * work[i]
+
+
+@kernel
+def extend_triangle(triangle, reflectors, j, work):
+    """Add column j of T, so that the product of the first j + 1 reflections is 1 − V T V†."""
+    work[:] = 0.0
+    for l in range(j, reflectors.shape[0]):
+        factor = reflectors[l, j]
+        row = reflectors[l]
+        for i in range(j):
+            work[i] += np.conj(row[i]) * factor
+    triangle[j, j] = 1.0
+    for m in range(j):
+        total = triangle[m, m] * work[m]
+        for i in range(m + 1, j):
+            total += triangle[m, i] * work[i]
+        triangle[m, j] = -total
+
+
+@kernel
 def reflect(complement, left, vectors):
     """Take the span of accepted points out of the complement by Householder reflections.
 
@@ -154,50 +205,29 @@ def reflect(complement, left, vectors):
     left : int
         Rows in use.
     vectors : array (accepted, left)
-        Coefficients of the accepted points; overwritten.
+        Coefficients of the accepted points.
     """
     accepted = vectors.shape[0]
-    reflectors = np.zeros((accepted, left), dtype=vectors.dtype)  # rows are V†
-    triangle = np.zeros((accepted, accepted), dtype=vectors.dtype)
+    columns = np.empty((left, accepted), dtype=vectors.dtype)
     for j in range(accepted):
-        column = vectors[j]
-        length = 0.0
-        for l in range(j, left):
-            length += (column[l] * np.conj(column[l])).real
-        length = np.sqrt(length)
-        head = column[j]
-        size = np.abs(head)
-        phase = head / size if size > 0.0 else head + 1.0
-        # v = column + phase·length·e_j; the sign avoids cancellation
-        column[j] = head + phase * length
-        scale = 1.0 / np.sqrt(length * (length + size))
-        reflector = reflectors[j]
-        for l in range(j, left):
-            reflector[l] = np.conj(column[l]) * scale  # ‖v‖² = 2, so H = 1 − v v†
-        for i in range(j + 1, accepted):
-            target = vectors[i]
-            overlap = target[j] * 0.0
-            for l in range(j, left):
-                overlap += reflector[l] * target[l]
-            for l in range(j, left):
-                target[l] -= overlap * np.conj(reflector[l])
-        triangle[j, j] = 1.0
-        for i in range(j):
-            other = reflectors[i]
-            overlap = head * 0.0
-            for l in range(j, left):
-                overlap += other[l] * np.conj(reflector[l])
-            for m in range(i + 1):
-                triangle[m, j] -= triangle[m, i] * overlap
-    adjoint = np.empty((accepted, accepted), dtype=vectors.dtype)
+        source = vectors[j]
+        for l in range(left):
+            columns[l, j] = source[l]
+    reflectors = np.zeros((left, accepted), dtype=vectors.dtype)  # V
+    triangle = np.zeros((accepted, accepted), dtype=vectors.dtype)  # T
+    work = np.empty(accepted, dtype=vectors.dtype)
     for j in range(accepted):
-        for i in range(accepted):
-            adjoint[j, i] = np.conj(triangle[i, j])
+        make_reflector(columns, reflectors, j)
+        apply_reflector(columns, reflectors, j, work)
+        extend_triangle(triangle, reflectors, j, work)
     lower = np.empty((left - accepted, accepted), dtype=vectors.dtype)
     for l in range(left - accepted):
         for j in range(accepted):
-            lower[l, j] = np.conj(reflectors[j, l + accepted])
-    change = multiply(lower, multiply(adjoint, multiply(reflectors, complement[:left])))
+            lower[l, j] = reflectors[l + accepted, j]
+    adjoint = conjugated(triangle).T.copy()
+    held = np.empty((accepted, complement.shape[1]), dtype=vectors.dtype)
+    np.dot(conjugated(reflectors).T, complement[:left], held)
+    change = multiply(lower, multiply(adjoint, held))
     for l in range(left - accepted):
         row = complement[l]
         source = complement[l + accepted]
