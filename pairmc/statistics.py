@@ -15,6 +15,9 @@ from scipy import linalg, special
 # A merged bin expects at least about this many counts in the whole run.
 MINIMUM_COUNT = 100
 
+# Coverage of an interval of one standard error to either side.
+ONE_SIGMA = 0.682689492137086
+
 # The covariance is trusted where there are at least this many snapshots for each merged bin.
 SNAPSHOTS_PER_BIN = 5
 

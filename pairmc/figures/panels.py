@@ -9,7 +9,7 @@ from importlib import import_module
 from typing import TYPE_CHECKING
 
 from pairmc.errors import InputError, Problem
-from pairmc.figures.views import differ_only_in_rotation
+from pairmc.figures.views import differ_only_in_rotation, with_all_pairs
 from pairmc.physics.observables import registry
 
 if TYPE_CHECKING:
@@ -89,7 +89,8 @@ def _of_angles(datasets: Sequence[xr.Dataset]) -> Panel:
     """Return the one panel of results that differ in the rotation only."""
     from pairmc.figures import rotation
 
-    return Panel(*rotation.size(datasets), lambda panel: rotation.draw(datasets, panel))
+    aligned = with_all_pairs(datasets)
+    return Panel(*rotation.size(aligned), lambda panel: rotation.draw(aligned, panel))
 
 
 def _held(dataset: xr.Dataset, heading: str, among: Sequence[str]) -> list[str]:

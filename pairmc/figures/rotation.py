@@ -17,6 +17,7 @@ from matplotlib.colors import to_hex, to_rgb
 from matplotlib.figure import SubFigure
 from matplotlib.lines import Line2D
 from matplotlib.markers import CARETUP, MarkerStyle
+from numpy.typing import NDArray
 
 from pairmc.figures import style
 from pairmc.figures.differences import (
@@ -164,10 +165,16 @@ def _is_like(label: Any) -> bool:
 def _equivalent(datasets: Sequence[xr.Dataset], one: int, other: int) -> bool:
     """Return whether the exact values of two pairs are the same in all results."""
     return all(
-        np.allclose(values.isel(pair=one), values.isel(pair=other), rtol=0.0, atol=_EQUAL)
+        _alike(values.isel(pair=one).values, values.isel(pair=other).values)
         for dataset in datasets
         for values in (dataset["pair_correlation_expected"], dataset["pair_correlation_bulk"])
     )
+
+
+def _alike(one: NDArray[np.float64], other: NDArray[np.float64]) -> bool:
+    """Return whether two curves are one, where both are there."""
+    both = np.isfinite(one) & np.isfinite(other)
+    return np.allclose(one[both], other[both], rtol=0.0, atol=_EQUAL)
 
 
 def _looks(angles: int) -> list[dict[str, Any]]:
@@ -204,7 +211,7 @@ def _draw_values(
     for order, (dataset, look) in enumerate(zip(datasets, looks, strict=True)):
         part = dataset.isel(pair=index)
         bulk = part["pair_correlation_bulk"].values
-        if not any(np.allclose(bulk, other, rtol=0.0, atol=_EQUAL) for other in infinite):
+        if not any(_alike(bulk, other) for other in infinite):
             axes.stairs(bulk, edges, baseline=None, label="infinite", linewidth=1.3, **INFINITE)
             infinite.append(bulk)
         axes.stairs(

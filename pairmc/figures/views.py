@@ -28,7 +28,8 @@ def angle_of(dataset: xr.Dataset) -> float:
 def differ_only_in_rotation(datasets: Sequence[xr.Dataset]) -> bool:
     """Return whether results are of one gas and box, each at another angle of spin rotation.
 
-    Seeds, snapshots and batches may differ; pairs and bins are the same.
+    Seeds, snapshots and batches may differ; bins are the same. Pairs may be missing: without a
+    rotation nobody is detected as a component without particles.
     """
     if len(datasets) < 2 or len({angle_of(dataset) for dataset in datasets}) < len(datasets):
         return False
@@ -36,10 +37,23 @@ def differ_only_in_rotation(datasets: Sequence[xr.Dataset]) -> bool:
     return all(
         all("pair_correlation" in one and "run_settings" in one.attrs for one in (first, dataset))
         and _unrotated(dataset) == _unrotated(first)
-        and np.array_equal(dataset["pair"], first["pair"])
         and np.array_equal(dataset["separation_bounds"], first["separation_bounds"])
         for dataset in others
     )
+
+
+def with_all_pairs(datasets: Sequence[xr.Dataset]) -> list[xr.Dataset]:
+    """Return results with the pairs that any of them has: those missing hold NaN, integers −1."""
+    every = max((dataset["pair"].values for dataset in datasets), key=len)
+    filled = []
+    for dataset in datasets:
+        of_pairs = dataset[[name for name in dataset if "pair" in dataset[name].dims]]
+        nothing = {
+            name: np.nan if part.dtype.kind == "f" else -1 for name, part in of_pairs.items()
+        }
+        aligned = of_pairs.reindex(pair=every, fill_value=nothing)
+        filled.append(dataset.drop_dims("pair").assign(aligned.data_vars))
+    return filled
 
 
 def _unrotated(dataset: xr.Dataset) -> dict[str, Any]:

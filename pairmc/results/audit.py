@@ -10,6 +10,7 @@ from numpy.typing import NDArray
 
 from pairmc.statistics import (
     MINIMUM_COUNT,
+    ONE_SIGMA,
     GlobalTest,
     Moments,
     hotelling,
@@ -24,9 +25,6 @@ FloatArray = NDArray[np.float64]
 
 # Coverage of the intervals in a result file.
 INTERVAL_LEVEL = 0.95
-
-# Coverage of an interval of one standard error to either side.
-_ONE_SIGMA = 0.682689492137086
 
 
 @dataclass(frozen=True, eq=False)
@@ -64,7 +62,7 @@ def count_errors(counts: NDArray[np.int64], expected: FloatArray) -> CountErrors
     spread = batches * standard_error(counts.astype(np.float64))
     arm = t_quantile(INTERVAL_LEVEL, batches) * spread
     sparse = expected < MINIMUM_COUNT
-    low, high = poisson_interval(total, _ONE_SIGMA)
+    low, high = poisson_interval(total, ONE_SIGMA)
     lower, upper = poisson_interval(total, INTERVAL_LEVEL)
     return CountErrors(
         error=np.where(sparse, np.maximum(total - low, high - total), spread),

@@ -11,7 +11,7 @@ from pairmc.physics.grids import SeparationGrid
 from pairmc.physics.theory import singlet_fraction
 from pairmc.results.collect import Collected
 from pairmc.runfile.run import RunFile
-from pairmc.statistics import MINIMUM_COUNT, standard_error
+from pairmc.statistics import MINIMUM_COUNT, ONE_SIGMA, poisson_interval, standard_error
 
 Variables = dict[str, tuple[Any, ...]]
 
@@ -103,5 +103,10 @@ def estimate(
     ratio = (same - opposite).sum(axis=0) / divisor
     # of a ratio: what each batch adds to the numerator beyond its share of the denominator
     left = ((same - opposite) - ratio * every) * (len(counts) / divisor)
+    spread = standard_error(left)
+    # where one kind was never found, as if its count were at the end of its Poisson interval
+    missing = np.minimum(same.sum(axis=0), opposite.sum(axis=0)) == 0
+    _, unseen = poisson_interval(np.zeros(1, dtype=np.int64), ONE_SIGMA)
+    spread = np.where(missing, np.maximum(spread, 2.0 * unseen / divisor), spread)
     value = np.where(known, 0.25 * (1.0 - 3.0 * ratio), np.nan)
-    return value, np.where(known, 0.75 * standard_error(left), np.nan)
+    return value, np.where(known, 0.75 * spread, np.nan)

@@ -139,7 +139,6 @@ class TestResultsThatAreShownTogether:
             rotated(5, 9, 30),  # in the same box
             mixed[1].isel(separation=slice(20)),
             rotated(9, 5, 30, bins=20),
-            mixed[1].isel(pair=[0, 1]),
             mixed[1].drop_attrs(),
             mixed[1].drop_vars("pair_correlation"),
         ):

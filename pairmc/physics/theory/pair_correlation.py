@@ -161,8 +161,5 @@ def _correlation(system: System, parts: PairDensities) -> NDArray[np.float64]:
     """Return g (pair, …, separation), normalised by the mean densities of detected labels."""
     means = system.detected_populations
     return np.stack(
-        [
-            detected(system, parts, i, j) / (means[i] * means[j])
-            for _, i, j in pair_labels(system)
-        ]
+        [detected(system, parts, i, j) / (means[i] * means[j]) for _, i, j in pair_labels(system)]
     )
