@@ -11,6 +11,7 @@ import numpy as np
 import xarray as xr
 from numpy.typing import NDArray
 
+from pairmc.errors import PairmcError
 from pairmc.physics.observables import registry
 from pairmc.statistics import Moments
 
@@ -121,7 +122,17 @@ class Collected:
             Observables wanted.
         result
             The earlier result.
+
+        Raises
+        ------
+        PairmcError
+            Where an earlier version wrote it without what is needed.
         """
+        if "mean_population" not in result:
+            raise PairmcError(
+                "the result was written by an earlier version and lacks what extending it needs; "
+                "sample into another file with --into"
+            )
         self.history = result.attrs["history"]
         for name in names:
             mine = self.tallies.setdefault(name, Tallies())

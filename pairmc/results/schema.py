@@ -5,7 +5,7 @@ from __future__ import annotations
 from pairmc.runfile.run import RunFile
 
 # major.minor: a newer minor opens with a warning, a newer major is refused.
-SCHEMA = (1, 0)
+SCHEMA = (1, 1)
 
 SCHEMA_ATTRIBUTE = "pairmc_schema"
 CONVENTIONS = "CF-1.11"

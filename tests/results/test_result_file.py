@@ -13,8 +13,9 @@ import xarray as xr
 from compliance_checker.runner import CheckSuite, ComplianceChecker
 
 import pairmc
-from pairmc.errors import ResultFileError
+from pairmc.errors import PairmcError, ResultFileError
 from pairmc.results import schema
+from pairmc.results.collect import Collected
 from pairmc.results.load import load
 from pairmc.runfile.digest import digest
 from pairmc.runfile.run import RunFile
@@ -59,7 +60,7 @@ def test_attributes_tell_where_it_came_from(small_result: Path, small_run: RunFi
     assert attributes["run_digest"] == digest(small_run)
     assert attributes["seed"] == "11"
     assert attributes["Conventions"] == "CF-1.11"
-    assert attributes[schema.SCHEMA_ATTRIBUTE] == "1.0"
+    assert attributes[schema.SCHEMA_ATTRIBUTE] == "1.1"
     assert json.loads(attributes["made_with"])[0]["pairmc"] == pairmc.__version__
     assert str(Path.home()) not in json.dumps(dict(attributes), default=str)
 
@@ -183,13 +184,23 @@ def with_schema(path: Path, target: Path, number: str) -> Path:
 def test_a_newer_major_schema_is_refused_and_a_newer_minor_warned_of(
     small_result: Path, tmp_path: Path
 ) -> None:
-    with pytest.raises(ResultFileError, match=r"schema 2\.0; allowed: up to 1\.0"):
+    with pytest.raises(ResultFileError, match=r"schema 2\.0; allowed: up to 1\.1"):
         load(with_schema(small_result, tmp_path / "major.nc", "2.0"))
     with pytest.warns(UserWarning, match="written with schema 1.7"):
         load(with_schema(small_result, tmp_path / "minor.nc", "1.7"))
 
 
-def test_the_committed_file_of_this_schema_still_opens() -> None:
-    result = load(Path(__file__).parent.parent / "data" / "schema-1.0.nc")
+@pytest.mark.parametrize("number", ["1.0", "1.1"])
+def test_the_committed_file_of_each_schema_still_opens(number: str) -> None:
+    result = load(Path(__file__).parent.parent / "data" / f"schema-{number}.nc")
+    assert result.attrs[schema.SCHEMA_ATTRIBUTE] == number
     assert float(result["pair_correlation_p_value"]) == pytest.approx(0.5, abs=0.4999)
     assert result["pair_count"].sum() > 0
+    new = {"snapshot_twist", "pair_count_expected", "rotation", "singlet_fraction_expected"}
+    assert (new & set(result)) == (new if number == "1.1" else set())
+
+
+def test_a_result_that_lacks_what_extending_needs_is_refused() -> None:
+    old = load(Path(__file__).parent.parent / "data" / "schema-1.0.nc")
+    with pytest.raises(PairmcError, match="written by an earlier version"):
+        Collected().add_result(["pair_correlation"], old)
