@@ -50,7 +50,10 @@ def refused(outcome: subprocess.CompletedProcess, *texts: str, lines: int = 1) -
 CHANGES = {
     "unknown key": (("bins = 20", "bin = 20"), ["bin", "bins"]),
     "negative population": (("down = 5", "down = -5"), ["particles.down", "-5", "from 1 to"]),
-    "no particles": (("down = 5", "down = 0"), ["particles.down", "0", "from 1 to"]),
+    "no particles": (
+        ("up = 9, down = 5", "up = 0, down = 0"),
+        ["particles.up", "0", "from 1 to"],
+    ),
     "wrong power of length": (("um^2", "um^3"), ["total_density", "1.1 / um^3", "per area"]),
     "no bins": (("bins = 20", "bins = 0"), ["bins", "from 1 to"]),
     "too many bins": (("bins = 20", "bins = 1000000000000"), ["bins", "10000"]),
