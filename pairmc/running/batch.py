@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import threading
 from collections.abc import Callable
 from functools import lru_cache, partial
 from typing import Any
@@ -26,6 +27,9 @@ from pairmc.streams import generator
 _COORDINATES_AT_A_TIME = 60_000
 
 Arrays = dict[str, NDArray[Any]]
+
+# Held while expectations are prepared, so that workers do not all do the same.
+_ONE_AT_A_TIME = threading.Lock()
 
 
 class StoppedError(PairmcError):
@@ -70,6 +74,18 @@ def snapshots_at_a_time(run: RunFile) -> int:
     return max(1, _COORDINATES_AT_A_TIME // (run.gas.particles * run.gas.dimension))
 
 
+@lru_cache(maxsize=4)
+def _expectations_known(run: RunFile) -> bool:
+    """Work out what the expectations of all twists need, once for all batches of a run."""
+    system = run.system()
+    twist = np.zeros((1, run.gas.dimension))
+    for name, settings in run.observables.items():
+        grid = registry.observable(name).grid(settings, system)
+        registry.theory(name).at_twists(system, grid, twist)
+    energy.at_twists(system, twist)
+    return True
+
+
 def run_batch(run: RunFile, batch: int, stop: Callable[[], bool] = lambda: False) -> Arrays:
     """Draw and tally one batch.
 
@@ -103,6 +119,9 @@ def run_batch(run: RunFile, batch: int, stop: Callable[[], bool] = lambda: False
     modules = {name: registry.observable(name) for name in run.observables}
     grids = {name: modules[name].grid(run.observables[name], system) for name in modules}
     averaged = bool(system.averaged)
+    if averaged:
+        with _ONE_AT_A_TIME:
+            _expectations_known(run)
     tallies = {name: modules[name].empty(grids[name], averaged) for name in modules}
     populations = np.zeros(len(run.gas.components), dtype=np.int64)
     energies = np.zeros(len(run.gas.components))
