@@ -186,6 +186,12 @@ def parse_quantity(text: str) -> Quantity:
     return replace(_quantity(number, powers), written=text)
 
 
+def in_atomic_units(unit: str) -> str:
+    """Return a unit of a result file with bohr and hartree in place of their metres and joules."""
+    bohr, hartree = f"{BOHR:.11e} m", f"{HARTREE:.13e} J"
+    return unit.replace(f"({bohr})", "bohr").replace(bohr, "bohr").replace(hartree, "hartree")
+
+
 def kind_in_words(kind: Kind) -> str:
     """Return what kind of quantity this is: ``a number per area``, ``a mass``."""
     lengths = {1: "a length", 2: "an area", 3: "a volume"}

@@ -78,12 +78,9 @@ def _quantity(name: str, quantity: dict[str, Any]) -> str:
 
 def readable_unit(unit: str) -> str:
     """Return a unit of the file with bohr and hartree in place of their metres and joules."""
-    from pairmc.units import BOHR, HARTREE
+    from pairmc.units import in_atomic_units
 
-    if unit == "1":
-        return ""
-    bohr, hartree = f"{BOHR:.11e} m", f"{HARTREE:.13e} J"
-    return unit.replace(f"({bohr})", "bohr").replace(bohr, "bohr").replace(hartree, "hartree")
+    return "" if unit == "1" else in_atomic_units(unit)
 
 
 def _audit(name: str, audit: dict[str, Any]) -> list[str]:

@@ -21,6 +21,7 @@ from pairmc.results.scales import component_labels, scale_variables
 from pairmc.results.singlet import singlet_variables
 from pairmc.runfile.digest import canonical, digest
 from pairmc.runfile.run import RunFile
+from pairmc.units import in_atomic_units
 
 Variables = dict[str, tuple[Any, ...]]
 
@@ -76,7 +77,19 @@ def build_dataset(run: RunFile, collected: Collected) -> xr.Dataset:
         run.observables["pair_correlation"], run.system()
     )
     variables |= singlet_variables(run, collected, grid)
-    return xr.Dataset(variables, coords=coordinates, attrs=attributes(run, collected))
+    dataset = xr.Dataset(variables, coords=coordinates, attrs=attributes(run, collected))
+    if run.gas.units.length == "bohr":
+        _name_atomic_units(dataset)
+    return dataset
+
+
+def _name_atomic_units(dataset: xr.Dataset) -> None:
+    """Say in words what the metres and joules of atomic units are, beside every such unit."""
+    for variable in dataset.variables.values():
+        unit = str(variable.attrs.get("units", ""))
+        readable = in_atomic_units(unit)
+        if readable != unit:
+            variable.attrs["atomic_unit"] = readable
 
 
 def _energies(run: RunFile, collected: Collected) -> NDArray[np.float64]:
