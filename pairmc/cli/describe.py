@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import textwrap
 from collections.abc import Sequence
 from typing import Any
 
@@ -37,6 +38,7 @@ def summary_text(summary: dict[str, Any]) -> str:
         f"  {text.counted(summary['snapshots'], 'snapshot')} in "
         f"{text.counted(summary['batches'], 'batch')}"
         + (f", positions of {kept} kept" if kept else ", no positions kept"),
+        *_conditions(summary),
         "",
         _components(summary["components"]),
     ]
@@ -44,6 +46,23 @@ def summary_text(summary: dict[str, Any]) -> str:
         lines += ["", *_audit(name, audit)]
     return "\n".join(lines)
 
+
+def _conditions(summary: dict[str, Any]) -> list[str]:
+    """Return the ensemble in words, and the temperature where there is one."""
+    lines = textwrap.wrap(
+        summary["ensemble"], _WIDTH, initial_indent="  ", subsequent_indent="    "
+    )
+    conditions = summary["conditions"]
+    if conditions.get("reduced_temperature", {"value": 0.0})["value"] > 0:
+        ratio = conditions["reduced_temperature"]["value"]
+        kelvin = conditions.get("temperature")
+        in_kelvin = "" if kelvin is None else f" = {text.temperature(kelvin['value'])}"
+        lines.append(f"  temperature {ratio:.5g} T_F of the majority component{in_kelvin}")
+    return lines
+
+
+# Characters of a line of text.
+_WIDTH = 100
 
 _HEADS = {
     "population": "particles",

@@ -50,10 +50,10 @@ def _ensemble(run: RunFile) -> str:
             "<N_s N_s'>/(<N_s><N_s'>), not 1"
         )
     if not warm:
-        return (
-            f"{run.gas.ensemble}: fixed populations; zero temperature; a partly filled last level "
-            "is an equal mixture of its fillings"
-        )
+        words = f"{run.gas.ensemble}: fixed populations; zero temperature; "
+        if all(part.closed for part in run.system().occupations):
+            return words + "closed shells"
+        return words + "a partly filled last level is an equal mixture of its fillings"
     if fixed:
         return "canonical: fixed populations at a temperature"
     return "grand canonical: populations fluctuate about their means, at a temperature"

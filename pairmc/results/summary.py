@@ -40,6 +40,11 @@ def summarise(dataset: xr.Dataset) -> dict[str, Any]:
         "run_digest": dataset.attrs["run_digest"],
         "seed": dataset.attrs["seed"],
         "ensemble": dataset.attrs["ensemble"],
+        "conditions": {
+            name: _quantity(dataset[name])
+            for name in ("reduced_temperature", "temperature", "rotation", "total_energy")
+            if name in dataset
+        },
         "snapshots": int(dataset["snapshot_count"].sum()),
         "batches": batches,
         "kept_snapshots": dataset.sizes.get("snapshot", 0),

@@ -336,3 +336,17 @@ def test_an_interrupt_while_libraries_are_loaded_ends_quietly(tmp_path: Path, na
     )
     assert outcome.returncode == 130
     assert outcome.stderr.strip() == ""
+
+
+def test_describe_says_the_ensemble_and_the_temperature(
+    call: Callable[..., Outcome], tmp_path: Path
+) -> None:
+    warm = SMALL.replace("mass = ", 'temperature = "0.4 T_F"\nmass = ')
+    (tmp_path / "warm.toml").write_text(warm)
+    outcome = call("sample", "--quiet", tmp_path / "warm.toml")
+    lines = outcome.out.splitlines()
+    assert lines[2] == "  canonical: fixed populations at a temperature"
+    assert lines[3].startswith("  temperature 0.4 T_F of the majority component = ")
+    assert lines[3].endswith("nK")
+    described = json.loads(call("describe", "--json", tmp_path / "warm.nc").out)
+    assert described[0]["conditions"]["reduced_temperature"]["value"] == pytest.approx(0.4)
