@@ -12,10 +12,14 @@ from pairmc.cli import text
 if TYPE_CHECKING:
     from numpy.typing import NDArray
 
+    from pairmc.physics.gas import Gas
     from pairmc.runfile.run import RunFile
 
 # Twists over which `check` averages; those of the snapshots are many more.
 _COLD_TWISTS, _WARM_TWISTS = 500, 12
+
+# Differences that are rounding.
+_ROUNDING = 1e-12
 
 # k_F r within which the exchange hole lies, in any dimension.
 _SHORT_REACH = 4.0
@@ -147,7 +151,7 @@ def _ranges(run: RunFile) -> list[str]:
         f"half the shortest side, in {bins} bins of {text.with_unit(width, length)} "
         f"(k_F r = {width * wavenumber:.3g})"
     ]
-    if reach * wavenumber < _SHORT_REACH:
+    if reach * wavenumber < _SHORT_REACH and system.pair is None:
         lines.append(
             f"warning: the exchange hole reaches to about k_F r = {_SHORT_REACH:g}; take more "
             "particles, or sides that differ less"
@@ -162,17 +166,35 @@ def _state(run: RunFile) -> list[str]:
     gas, summary = run.gas, state_of(run.system())
     if summary is None:
         return ["orbitals: a component whose shell is open has no state of its own"]
-    kinetic = gas.units.kinetic or 1.0
-    energy = text.energy(kinetic * summary.energy, gas.units)
-    above = text.energy(kinetic * (summary.energy - summary.ground_energy), gas.units)
+    energy = _energy(gas, summary.energy)
+    above = _energy(gas, summary.excitation_energy)
     ways = "not counted" if summary.degeneracy is None else f"{summary.degeneracy}"
     wave = ", ".join(
         text.with_unit(part, gas.units.length, -1) for part in summary.wave_vector + 0.0
     )
+    pair = [] if run.system().pair is None else [_pair(run)]
     return [
+        *pair,
         f"orbitals as named: energy {energy}, {above} above the ground state; total wave vector "
-        f"({wave}); states of this energy and these populations: {ways}"
+        f"({wave}); states of this energy and these populations: {ways}",
     ]
+
+
+def _energy(gas: Gas, value: float) -> str:
+    """Return an energy in ħ²/(m · length²) in the run's unit; over ħ²/m where no mass is known."""
+    if gas.units.kinetic is None:
+        return f"{text.with_unit(value, gas.units.length, -2)} × ħ²/m"
+    return text.energy(gas.units.kinetic * value, gas.units)
+
+
+def _pair(run: RunFile) -> str:
+    """Return what state two particles are in."""
+    state = run.system().pair
+    if state is None:
+        return ""
+    one, other = (list(map(int, row)) for row in state.numbers)
+    where = f"both in orbital {one}" if one == other else f"in orbitals {one} and {other}"
+    return f"one spin {state.kind} of two particles, {where}"
 
 
 def _finite_size(run: RunFile) -> list[str]:
@@ -196,6 +218,9 @@ def _finite_size(run: RunFile) -> list[str]:
         if not run.rotation and i != j:
             continue
         wavenumber = gas.fermi_wavenumbers[i if gas.populations[i] else gas.majority]
+        if np.abs(own[row] - bulk[row]).max() < _ROUNDING:
+            lines.append(f"{label}: g of this box is that of the infinite system")
+            continue
         place = int(np.abs(own[row] - bulk[row]).argmax())
         separation = 0.5 * (grid.edges[place] + grid.edges[place + 1])
         line = (
@@ -236,7 +261,7 @@ def _closed_shells(run: RunFile) -> list[str]:
         f"{name}: {'named orbitals' if isinstance(occupation, Listed) else 'closed shell'}, "
         f"one determinant of {occupation.population}"
         for name, occupation in occupations
-        if occupation.closed and occupation.population
+        if occupation.closed and occupation.population and run.system().pair is None
     ]
 
 

@@ -57,6 +57,12 @@ class StateSummary:
     degeneracy: int | None
     ground_energy: float
 
+    @property
+    def excitation_energy(self) -> float:
+        """Energy above the ground state; 0 where they differ by rounding."""
+        above = self.energy - self.ground_energy
+        return above if above > DEGENERACY_TOLERANCE * self.energy else 0.0
+
 
 def state_of(system: System) -> StateSummary | None:
     """Return the summary of a system in which one state is filled; None where there are several.

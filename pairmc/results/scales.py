@@ -89,6 +89,14 @@ def scale_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
             np.array(run.system().detected_populations),
             {"units": "1", "long_name": "mean number of particles detected as the component"},
         )
+        variables["detected_density"] = (
+            spin,
+            np.array(run.system().detected_densities),
+            {
+                "units": units.udunits(-gas.dimension),
+                "long_name": "mean density of particles detected as the component",
+            },
+        )
     if run.twist != "averaged" and any(run.twist):
         variables["twist"] = (
             ("axis",),
@@ -190,7 +198,7 @@ def _state_variables(run: RunFile) -> Variables:
         ),
         "excitation_energy": (
             (),
-            scale * (summary.energy - summary.ground_energy),
+            scale * summary.excitation_energy,
             about | {"long_name": "total energy above the ground state of the same populations"},
         ),
         "total_wave_vector": (

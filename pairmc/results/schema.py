@@ -16,7 +16,8 @@ TWIST_ATTRIBUTES = {
 }
 
 NORMALISATION = (
-    "pair correlations are normalised by the densities of the run: "
+    "pair correlations are normalised by the mean densities of the run, where spins are rotated by "
+    "those of detected components: "
     "g = (pairs in the bin)/(snapshots * ideal pairs), ideal = n_s^2 V dv / 2 for like components "
     "and n_s n_s' V dv for unlike ones, dv the volume of the shell; not by the number of pairs"
 )
@@ -38,6 +39,13 @@ def ensemble_words(run: RunFile) -> str:
 
 
 def _ensemble(run: RunFile) -> str:
+    words = _occupations(run)
+    if run.twist == "averaged" or not any(run.twist):
+        return words
+    return f"{words}; twist {', '.join(f'{part:g}' for part in run.twist)} of the boundary"
+
+
+def _occupations(run: RunFile) -> str:
     warm, fixed = run.gas.thermal_energy > 0, run.gas.ensemble == "canonical"
     if run.twist == "averaged":
         warmth = "at a temperature" if warm else "zero temperature"

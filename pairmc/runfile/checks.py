@@ -198,7 +198,9 @@ def _check_spin(document: Document) -> Iterator[Finding]:
             Refusal(
                 f"a rotation of {len(particles)} component{'s' * (len(particles) != 1)}",
                 "two components, of which one may have no particles",
-                "name a second component, such as particles = { up = 49, down = 0 }",
+                "name a second component, such as particles = { up = 49, down = 0 }"
+                if len(particles) == 1
+                else "leave the rotation out, or all components but two",
             ),
         )
     elif empty and (len(particles) != 2 or len(empty) == 2):

@@ -59,7 +59,7 @@ def check_occupation(
     for name, part in spec.components:
         if name not in particles:
             near = did_you_mean(name, (*particles, *PAIRS))
-            refusal = Refusal("an unknown component", ", ".join(particles), near)
+            refusal = Refusal("an unknown component", ", ".join((*particles, *PAIRS)), near)
             yield Finding(("occupation", name), refusal)
         else:
             findings = list(_check_numbers(name, part, particles[name]))

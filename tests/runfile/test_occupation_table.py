@@ -331,7 +331,9 @@ class TestRefusedAcrossTables:
     def test_unknown_components(self, name: str, advice: str) -> None:
         (finding,) = in_box(f"{name} = [[0, 0]]")
         assert finding.path == ("occupation", name)
-        assert finding.refusal == Refusal("an unknown component", "up, down", advice)
+        assert finding.refusal == Refusal(
+            "an unknown component", "up, down, singlet, triplet", advice
+        )
 
     @pytest.mark.parametrize(
         ("text", "particles", "refusal"),
