@@ -13,6 +13,7 @@ if TYPE_CHECKING:
     from numpy.typing import NDArray
 
     from pairmc.physics.gas import Gas
+    from pairmc.physics.two_particles import TwoParticleState
     from pairmc.runfile.run import RunFile
 
 # Twists over which `check` averages; those of the snapshots are many more.
@@ -172,9 +173,9 @@ def _state(run: RunFile) -> list[str]:
     wave = ", ".join(
         text.with_unit(part, gas.units.length, -1) for part in summary.wave_vector + 0.0
     )
-    pair = [] if run.system().pair is None else [_pair(run)]
+    state = run.system().pair
     return [
-        *pair,
+        *([] if state is None else [_pair(state)]),
         f"orbitals as named: energy {energy}, {above} above the ground state; total wave vector "
         f"({wave}); states of this energy and these populations: {ways}",
     ]
@@ -187,11 +188,8 @@ def _energy(gas: Gas, value: float) -> str:
     return text.energy(gas.units.kinetic * value, gas.units)
 
 
-def _pair(run: RunFile) -> str:
+def _pair(state: TwoParticleState) -> str:
     """Return what state two particles are in."""
-    state = run.system().pair
-    if state is None:
-        return ""
     one, other = (list(map(int, row)) for row in state.numbers)
     where = f"both in orbital {one}" if one == other else f"in orbitals {one} and {other}"
     return f"one spin {state.kind} of two particles, {where}"

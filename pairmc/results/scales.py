@@ -31,6 +31,14 @@ def energy_unit(gas: Gas) -> str:
     return gas.units.energy or "1"
 
 
+def _energies_of(gas: Gas) -> tuple[float, dict[str, str]]:
+    """Return what ħ²/(m · length²) is in the file's energies, and their attributes."""
+    if gas.units.kinetic is None:
+        comment = "times hbar^2 / mass is the energy"
+        return 1.0, {"units": gas.units.udunits(-2), "comment": comment}
+    return gas.units.kinetic, {"units": energy_unit(gas)}
+
+
 def scale_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
     """Return k_F, E_F, T_F, densities, populations, box sides and r_s, each with its unit.
 
@@ -112,7 +120,7 @@ def scale_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
     if temperatures is not None:
         about = {"units": "K", "long_name": "Fermi temperature of the component"}
         variables["fermi_temperature"] = (spin, np.array(temperatures), about)
-    variables |= _warm_variables(run, energies) | _state_variables(run)
+    variables |= _energy_variables(run, energies) | _state_variables(run)
     if gas.polarisation is not None:
         variables["polarisation"] = (
             (),
@@ -122,16 +130,13 @@ def scale_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
     return variables
 
 
-def _warm_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
+def _energy_variables(run: RunFile, energies: NDArray[np.float64]) -> Variables:
     """Return temperature, chemical potential and energies: of this system and of the infinite one.
 
     Chemical potentials of fixed populations are those of the infinite system.
     """
     gas, T = run.gas, run.gas.thermal_energy
-    scale = 1.0 if gas.units.kinetic is None else gas.units.kinetic
-    about = {"units": energy_unit(gas)}
-    if gas.units.kinetic is None:
-        about = {"units": gas.units.udunits(-2), "comment": "times hbar^2 / mass is the energy"}
+    scale, about = _energies_of(gas)
     spin = ("spin",)
     variables: Variables = {
         "reduced_temperature": (
@@ -186,10 +191,7 @@ def _state_variables(run: RunFile) -> Variables:
     summary = state_of(system)
     if summary is None:
         return {}
-    scale = 1.0 if gas.units.kinetic is None else gas.units.kinetic
-    about = {"units": energy_unit(gas)}
-    if gas.units.kinetic is None:
-        about = {"units": gas.units.udunits(-2), "comment": "times hbar^2 / mass is the energy"}
+    scale, about = _energies_of(gas)
     variables: Variables = {
         "total_energy": (
             (),

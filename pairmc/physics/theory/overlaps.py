@@ -83,8 +83,7 @@ def _folding(numbers: NDArray[np.int64], mean: Callable[[], NDArray[np.float64]]
     mean
         Gives mean occupations; whether orbitals are alike shows in them.
     """
-    shape, place = _grid(numbers)
-    if prod(shape) <= FOLD_ABOVE:
+    if prod(_grid(numbers)[0]) <= FOLD_ABOVE:
         return False
     if np.any(numbers.min(axis=0) != -numbers.max(axis=0)):
         return False

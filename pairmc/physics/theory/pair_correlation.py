@@ -22,6 +22,7 @@ from pairmc.physics.theory.pair_densities import (
     detected,
     of_infinite_system,
     singlet,
+    singlet_at_ground_twists,
 )
 from pairmc.physics.theory.twists import TwistFunction, slowest_fall
 
@@ -101,8 +102,7 @@ def singlet_at_twists(
     array (snapshot, separation)
     """
     if all(isinstance(part, AveragedGround) for part in system.averaged):
-        parts = at_ground_twists(system, grid.edges, twists, cross=True)
-        return singlet(parts)[0]
+        return singlet_at_ground_twists(system, grid.edges, twists)
     return _warm(system, grid, twists)[:, len(grid.pairs)]
 
 

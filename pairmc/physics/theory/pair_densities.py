@@ -120,6 +120,26 @@ def at_ground_twists(
     return PairDensities(like, number, between)
 
 
+def singlet_at_ground_twists(system: System, edges: FloatArray, twists: FloatArray) -> FloatArray:
+    """Return the first of `singlet` at each twist, at zero temperature; the rest is not needed.
+
+    Parameters
+    ----------
+    system, edges, twists
+        See `at_ground_twists`; two components.
+
+    Returns
+    -------
+    array (snapshot, separation)
+    """
+    one, other = (part for part in system.averaged if isinstance(part, AveragedGround))
+    found = np.empty((len(twists), len(edges) - 1))
+    for part, weights in cross_overlaps_at_twists(one, other, twists):
+        # all differences together are the product of the numbers
+        found[part] = 2.0 * weights.total[:, None] - _differing(system, weights, edges)
+    return found
+
+
 def of_infinite_system(gas: Gas, edges: FloatArray) -> PairDensities:
     """Return the averages of the infinite system, as in a box of the gas's volume.
 
